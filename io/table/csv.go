@@ -52,7 +52,7 @@ func (t *Table) WriteCSV(w io.Writer) error {
 // quoted puts a name in quotation marks where it would be misread without:
 // "#" at the start of a line marks a remark, an empty line is skipped.
 func quoted(name string) string {
-	if name != "" && name[0] != '#' && name == strings.TrimSpace(name) && !strings.ContainsAny(name, ",\"\r\n") {
+	if name != "" && name[0] != '#' && name == strings.TrimSpace(name) && !strings.ContainsAny(name, ",\"") {
 		return name
 	}
 	return `"` + strings.ReplaceAll(name, `"`, `""`) + `"`

@@ -2,7 +2,10 @@
 // units, and the record of how they were made. Files, figures and fits share it.
 package table
 
-import "fmt"
+import (
+	"fmt"
+	"strings"
+)
 
 // A Column is one named series of numbers.
 type Column struct {
@@ -52,8 +55,8 @@ func (t *Table) Add(name, unit, about string, values []float64) {
 	t.Columns = append(t.Columns, Column{Name: name, Unit: unit, About: about, Values: values})
 }
 
-// Check returns an error if two columns have one name, if their lengths differ,
-// or if the warnings stand in Meta as well. What writes a table calls it.
+// Check returns an error if two columns have one name, if a name has a line
+// break, if the lengths of columns differ, or if the warnings stand in Meta as well. What writes a table calls it.
 func (t *Table) Check() error {
 	seen := make(map[string]bool, len(t.Columns))
 	for _, c := range t.Columns {
@@ -61,6 +64,9 @@ func (t *Table) Check() error {
 			return fmt.Errorf("table: two columns are named %q; every column needs a name of its own", c.Name)
 		}
 		seen[c.Name] = true
+		if strings.ContainsAny(c.Name, "\r\n") {
+			return fmt.Errorf("table: the name of column %q has a line break; take it out", c.Name)
+		}
 		if len(c.Values) != t.Rows() {
 			return fmt.Errorf("table: column %q has %d rows, column %q has %d; all must have the same number",
 				c.Name, len(c.Values), t.Columns[0].Name, t.Rows())

@@ -31,6 +31,7 @@ func TestCheck(t *testing.T) {
 		want  string
 	}{
 		"name": {table.Table{Columns: []table.Column{{Name: "time"}, {Name: "time"}}}, `two columns are named "time"`},
+		"break": {table.Table{Columns: []table.Column{{Name: "time\nsignal"}}}, `"time\nsignal" has a line break`},
 		"length": {table.Table{Columns: []table.Column{{Name: "time", Values: []float64{1}}, {Name: "signal"}}},
 			`column "signal" has 0 rows, column "time" has 1`},
 		"meta": {table.Table{Meta: map[string]string{table.MetaWarnings: "[]"}}, "warnings belong in Warnings"},
