@@ -1,0 +1,251 @@
+package lindblad
+
+import "math"
+
+// cone keeps density matrices positive. The watch is a Cholesky factorisation
+// of ρ + 1e-13, block by block; a state that fails is replaced by the nearest
+// density matrix of the same trace (Smolin, Gambetta & Smith, Phys. Rev. Lett.
+// 108, 070502, 2012) or, where that would fill coordinates that cannot be
+// reached, by the least mixture with the uniform state.
+type cone struct {
+	layout *Layout
+	made   uint64
+	blocks [][]int
+	rho    []complex128
+	vec    []complex128
+	val    []float64
+}
+
+const shift = 1e-13
+
+// reset finds the blocks: levels joined by reachable coherences.
+func (w *cone) reset(l *Layout) {
+	if w.layout == l && w.made == l.made {
+		return
+	}
+	w.layout, w.made = l, l.made
+	n := l.levels
+	parent := make([]int, n)
+	for i := range parent {
+		parent[i] = i
+	}
+	root := func(i int) int {
+		for parent[i] != i {
+			i = parent[i]
+		}
+		return i
+	}
+	for _, g := range l.global {
+		if int(g) >= n {
+			a, b := pairOf(n, int(g))
+			if ra, rb := root(a), root(b); ra < rb {
+				parent[rb] = ra
+			} else {
+				parent[ra] = rb
+			}
+		}
+	}
+	w.blocks = w.blocks[:0]
+	at := make([]int, n)
+	for i := 0; i < n; i++ {
+		if l.index[i] < 0 {
+			continue
+		}
+		if root(i) == i {
+			at[i] = len(w.blocks)
+			w.blocks = append(w.blocks, nil)
+		}
+		b := &w.blocks[at[root(i)]]
+		*b = append(*b, i)
+	}
+	most := 0
+	for _, b := range w.blocks {
+		most = max(most, len(b))
+	}
+	w.rho = make([]complex128, most*most)
+}
+
+// keep repairs x when it lies outside the cone; low is the lowest eigenvalue
+// that it had.
+func (w *cone) keep(l *Layout, x []float64) (low float64, repaired bool) {
+	w.reset(l)
+	for _, b := range w.blocks {
+		if !w.positive(l, x, b) {
+			return w.repair(l, x), true
+		}
+	}
+	return 0, false
+}
+
+func (w *cone) load(l *Layout, x []float64, block []int) {
+	m := len(block)
+	for i, a := range block {
+		for j, b := range block[:i+1] {
+			w.rho[i*m+j] = l.Coherence(x, a, b)
+		}
+	}
+}
+
+func (w *cone) positive(l *Layout, x []float64, block []int) bool {
+	if len(block) == 1 {
+		return l.Population(x, block[0]) > -shift
+	}
+	w.load(l, x, block)
+	m := len(block)
+	r := w.rho
+	for i := 0; i < m; i++ {
+		d := real(r[i*m+i]) + shift
+		for j := 0; j < i; j++ {
+			v := r[i*m+j]
+			for k := 0; k < j; k++ {
+				u := r[j*m+k]
+				v -= r[i*m+k] * complex(real(u), -imag(u))
+			}
+			v /= complex(real(r[j*m+j]), 0)
+			r[i*m+j] = v
+			d -= real(v)*real(v) + imag(v)*imag(v)
+		}
+		if !(d > 0) {
+			return false
+		}
+		r[i*m+i] = complex(math.Sqrt(d), 0)
+	}
+	return true
+}
+
+// repair projects x and returns its lowest eigenvalue.
+func (w *cone) repair(l *Layout, x []float64) float64 {
+	n := l.levels
+	rho := make([]complex128, n*n)
+	l.State(x, rho)
+	vec, val := hermitianEigen(rho, n)
+	low := math.Inf(1)
+	// Only levels that can be reached count.
+	order := make([]int, 0, n)
+	for i, v := range val {
+		low = math.Min(low, v)
+		order = append(order, i)
+	}
+	reachable := 0
+	for a := 0; a < n; a++ {
+		if l.index[a] >= 0 {
+			reachable++
+		}
+	}
+	before := append([]float64(nil), x...)
+	// Nearest: drop the lowest eigenvalues, spreading what they were.
+	for i := 1; i < len(order); i++ {
+		for j := i; j > 0 && val[order[j]] < val[order[j-1]]; j-- {
+			order[j], order[j-1] = order[j-1], order[j]
+		}
+	}
+	debt := 0.0
+	kept := append([]float64(nil), val...)
+	for i, o := range order {
+		left := float64(len(order) - i)
+		if val[o]+debt/left < 0 {
+			debt += val[o]
+			kept[o] = 0
+			continue
+		}
+		for _, q := range order[i:] {
+			kept[q] = val[q] + debt/left
+		}
+		break
+	}
+	for i := 0; i < n; i++ {
+		for j := 0; j < n; j++ {
+			var v complex128
+			for q := 0; q < n; q++ {
+				u := vec[j*n+q]
+				v += vec[i*n+q] * complex(kept[q], 0) * complex(real(u), -imag(u))
+			}
+			rho[i*n+j] = v
+		}
+	}
+	for i, g := range l.global {
+		x[i] = coordinate(rho, n, int(g))
+	}
+	for _, b := range w.blocks {
+		if !w.positive(l, x, b) {
+			copy(x, before)
+			w.mix(l, x, low, reachable)
+			break
+		}
+	}
+	return low
+}
+
+// mix adds the least part of the uniform state over the reachable levels.
+func (w *cone) mix(l *Layout, x []float64, low float64, reachable int) {
+	tr := l.trace(x)
+	uniform := tr / float64(reachable)
+	p := -low / (uniform - low)
+	for i := 0; i < l.reach; i++ {
+		x[i] *= 1 - p
+	}
+	for _, i := range l.pops {
+		x[i] += p * uniform
+	}
+}
+
+// hermitianEigen diagonalises a (n×n, row-major, overwritten) by Jacobi's
+// rotations. Column q of vec is the eigenvector of val[q].
+func hermitianEigen(a []complex128, n int) (vec []complex128, val []float64) {
+	vec = make([]complex128, n*n)
+	for i := 0; i < n; i++ {
+		vec[i*n+i] = 1
+	}
+	conj := func(z complex128) complex128 { return complex(real(z), -imag(z)) }
+	for sweep := 0; sweep < 60; sweep++ {
+		var off, all float64
+		for i := 0; i < n; i++ {
+			for j := 0; j < n; j++ {
+				v := real(a[i*n+j])*real(a[i*n+j]) + imag(a[i*n+j])*imag(a[i*n+j])
+				all += v
+				if i != j {
+					off += v
+				}
+			}
+		}
+		if off <= 1e-36*all {
+			break
+		}
+		for p := 0; p < n; p++ {
+			for q := p + 1; q < n; q++ {
+				h := a[p*n+q]
+				m := math.Hypot(real(h), imag(h))
+				if m == 0 {
+					continue
+				}
+				phase := h / complex(m, 0)
+				theta := (real(a[q*n+q]) - real(a[p*n+p])) / (2 * m)
+				t := 1 / (math.Abs(theta) + math.Sqrt(theta*theta+1))
+				if theta < 0 {
+					t = -t
+				}
+				c := 1 / math.Sqrt(t*t+1)
+				s := complex(t*c, 0)
+				// columns: p' = c p − s e^{−iφ} q,  q' = s e^{iφ} p + c q
+				for i := 0; i < n; i++ {
+					x, y := a[i*n+p], a[i*n+q]
+					a[i*n+p] = complex(c, 0)*x - s*conj(phase)*y
+					a[i*n+q] = s*phase*x + complex(c, 0)*y
+					x, y = vec[i*n+p], vec[i*n+q]
+					vec[i*n+p] = complex(c, 0)*x - s*conj(phase)*y
+					vec[i*n+q] = s*phase*x + complex(c, 0)*y
+				}
+				for i := 0; i < n; i++ {
+					x, y := a[p*n+i], a[q*n+i]
+					a[p*n+i] = complex(c, 0)*x - s*phase*y
+					a[q*n+i] = s*conj(phase)*x + complex(c, 0)*y
+				}
+			}
+		}
+	}
+	val = make([]float64, n)
+	for i := range val {
+		val[i] = real(a[i*n+i])
+	}
+	return vec, val
+}

@@ -1,0 +1,504 @@
+package lindblad
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"math"
+)
+
+// Settings of a solver. The zero value means the stated defaults.
+type Settings struct {
+	Accuracy float64 // bound on the true error of any element of ρ, 1e-12 to 1e-2 (default 1e-8)
+}
+
+// Stats says what a solver did, over all its runs.
+type Stats struct {
+	Exponentials int     // propagators computed
+	Remembered   int     // propagators found in the memory
+	Applied      int     // propagators applied to a state
+	Steps        int     // steps of the integrator in time
+	Rejected     int     // steps that were repeated shorter
+	Products     int     // sparse products of these steps
+	Projections  int     // states brought back into the cone of density matrices
+	TraceError   float64 // largest |Tr ρ − Tr ρ(0)| of an output
+	LowestFound  float64 // most negative eigenvalue met at an output before it was brought back
+}
+
+// Solver runs sequences on one layout. It owns workspaces: one goroutine each.
+type Solver struct {
+	l        *Layout
+	memory   *Memory
+	accuracy float64
+	stats    Stats
+	warnings []string
+
+	k       int // directions of this run
+	x       []float64
+	y       []float64
+	dx      [][]float64
+	out     []float64
+	vals    []float64
+	dvals   []float64
+	key     []float64
+	exp     exponential
+	taylor  taylor
+	cone    cone
+	theta   []float64
+	dtheta  [][]float64
+	groups  map[*Node]*groupMap
+	perTime float64
+
+	ctx       context.Context
+	stretches []Stretch
+	rec       Record
+	emit      func(sample int, x []float64, dx [][]float64) error
+	clock     clock
+	played    int
+	trace     float64
+}
+
+// clock follows the recorded time.
+type clock struct {
+	running bool
+	done    bool // the recorded stretch has been played
+	now     float64
+	lost    float64 // rounding of now
+	dnow    []float64
+	total   float64
+	dtotal  []float64
+	next    int
+	samples int
+	step    float64
+	same    float64 // times closer than this are equal
+}
+
+// NewSolver returns a solver with memory m, which may be nil.
+func NewSolver(l *Layout, m *Memory, s Settings) *Solver {
+	v := new(Solver)
+	v.Use(l, m, s)
+	return v
+}
+
+// Use makes the solver anew for another layout, reusing its workspaces.
+func (s *Solver) Use(l *Layout, m *Memory, set Settings) {
+	s.l, s.memory, s.accuracy = l, m, set.Accuracy
+	if s.accuracy == 0 {
+		s.accuracy = 1e-8
+	}
+	s.accuracy = math.Min(math.Max(s.accuracy, 1e-12), 1e-2)
+	s.stats, s.warnings = Stats{}, s.warnings[:0]
+}
+
+// Stats returns what was done so far.
+func (s *Solver) Stats() Stats { return s.stats }
+
+// Warnings returns doubts about the results so far.
+func (s *Solver) Warnings() []string { return s.warnings }
+
+func (s *Solver) warn(text string) {
+	for _, w := range s.warnings {
+		if w == text {
+			return
+		}
+	}
+	s.warnings = append(s.warnings, text)
+}
+
+// Run plays the order from the state x0 and hands out states. dx0 holds one
+// tangent ∂x/∂θ_j per direction; nil tangents are zero. The states handed to
+// emit belong to the solver: they change after emit returns. With
+// rec.Samples = 0 emit is called once, at the end of the sequence.
+func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretches []Stretch, order []Node, rec Record,
+	emit func(sample int, x []float64, dx [][]float64) error) error {
+	l := s.l
+	if len(x0) != l.n {
+		panic(fmt.Sprintf("lindblad: a state of length %d for a layout of %d", len(x0), l.n))
+	}
+	s.k = len(dx0)
+	rotors := 0
+	for i := range stretches {
+		s.k = max(s.k, len(stretches[i].Slopes))
+		rotors = max(rotors, len(stretches[i].Rotors))
+	}
+	for i := range stretches {
+		if err := l.checkStretch(i, &stretches[i], rotors, s.k); err != nil {
+			return err
+		}
+	}
+	if err := checkNodes(order, len(stretches)); err != nil {
+		return err
+	}
+	if rec.Samples < 0 || rec.Samples == 1 {
+		return fmt.Errorf("lindblad: %d samples; 0 or at least 2 are wanted", rec.Samples)
+	}
+	if rec.During >= len(stretches) {
+		return fmt.Errorf("lindblad: samples during stretch %d of %d", rec.During, len(stretches))
+	}
+	n := l.n
+	s.ctx, s.stretches, s.rec, s.emit = ctx, stretches, rec, emit
+	s.x, s.y, s.out = zeroed(s.x, (1+s.k)*n), sized(s.y, (1+s.k)*n), sized(s.out, (1+s.k)*n)
+	copy(s.x, x0)
+	for j, d := range dx0 {
+		if d != nil && len(d) != n {
+			panic(fmt.Sprintf("lindblad: a tangent of length %d for a layout of %d", len(d), n))
+		}
+		copy(s.x[(1+j)*n:(2+j)*n], d)
+	}
+	if !allFinite(s.x) {
+		return errors.New("lindblad: the start state is not finite")
+	}
+	s.dx = sized(s.dx, s.k)
+	for j := range s.dx {
+		s.dx[j] = s.out[(1+j)*n : (2+j)*n]
+	}
+	s.theta = zeroed(s.theta, rotors)
+	s.dtheta = sized(s.dtheta, s.k)
+	for j := range s.dtheta {
+		s.dtheta[j] = zeroed(s.dtheta[j], rotors)
+	}
+	s.groups = nil
+	s.played = 0
+	s.trace = l.trace(x0)
+	s.startClock(order)
+	if err := s.playAll(order); err != nil {
+		return err
+	}
+	if rec.Samples == 0 {
+		return s.hand(0, nil, 0)
+	}
+	if rec.During >= 0 && !s.clock.done {
+		return fmt.Errorf("lindblad: samples during stretch %d, which the order never plays", rec.During)
+	}
+	return s.handRest()
+}
+
+// total adds the duration of the order and its slopes.
+func (s *Solver) total(order []Node, times float64, sum *float64, slopes []float64) (shaped float64) {
+	for i := range order {
+		n := &order[i]
+		if n.Group != nil {
+			shaped += s.total(n.Group, times*float64(n.Repeat), sum, slopes)
+			continue
+		}
+		st := &s.stretches[n.Stretch]
+		if st.Ideal {
+			continue
+		}
+		*sum += times * st.Lasts
+		for j := range st.Slopes {
+			slopes[j] += times * st.Slopes[j].Lasts
+		}
+		if !s.exact(st) {
+			shaped += times * st.Lasts
+		}
+	}
+	return shaped
+}
+
+func (s *Solver) startClock(order []Node) {
+	c := &s.clock
+	c.running, c.done = s.rec.During < 0 && s.rec.Samples > 0, false
+	c.now, c.lost, c.next, c.samples = 0, 0, 0, s.rec.Samples
+	c.dnow, c.dtotal = zeroed(c.dnow, s.k), zeroed(c.dtotal, s.k)
+	c.total = 0
+	shaped := s.total(order, 1, &c.total, c.dtotal)
+	s.perTime = 0
+	if shaped > 0 {
+		s.perTime = 0.2 * s.accuracy / shaped
+	}
+	c.set()
+}
+
+func (c *clock) set() {
+	c.step = 0
+	if c.samples > 1 {
+		c.step = c.total / float64(c.samples-1)
+	}
+	c.same = 1e-13 * c.total
+}
+
+// at is the time of sample i.
+func (c *clock) at(i int) float64 {
+	return c.total * (float64(i) / float64(c.samples-1))
+}
+
+// due tells whether the next sample lies before time t, and not at it.
+func (c *clock) due(t float64) bool {
+	return c.running && c.next < c.samples && c.at(c.next) < t-c.same
+}
+
+// pass moves the clock on by a duration with slopes (times more).
+func (s *Solver) pass(st *Stretch) {
+	c := &s.clock
+	if c.running {
+		y := st.Lasts + c.lost
+		t := c.now + y
+		c.lost = y - (t - c.now)
+		c.now = t
+		for j := range st.Slopes {
+			c.dnow[j] += st.Slopes[j].Lasts
+		}
+	}
+	for r, w := range st.Rotors {
+		s.theta[r] = math.Remainder(s.theta[r]+turn(w, st.Lasts), 2*math.Pi)
+		for j := range st.Slopes {
+			d := &st.Slopes[j]
+			s.dtheta[j][r] += w * d.Lasts
+			if d.Rotors != nil {
+				s.dtheta[j][r] += d.Rotors[r] * st.Lasts
+			}
+		}
+	}
+}
+
+func (s *Solver) playAll(order []Node) error {
+	for i := range order {
+		n := &order[i]
+		var err error
+		if n.Group != nil {
+			err = s.playGroup(n)
+		} else {
+			err = s.playStretch(n.Stretch)
+		}
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+// exact tells whether a stretch has a dense propagator.
+func (s *Solver) exact(st *Stretch) bool { return len(st.Terms) == 0 && s.l.n <= denseLimit }
+
+// denseLimit is the largest state with dense propagators.
+const denseLimit = 200
+
+func (s *Solver) playStretch(i int) error {
+	if s.played++; s.played%256 == 0 && s.ctx.Err() != nil {
+		return s.ctx.Err()
+	}
+	st := &s.stretches[i]
+	c := &s.clock
+	opens := s.rec.Samples > 0 && i == s.rec.During && !c.done
+	if opens {
+		c.running, c.now, c.lost, c.total = true, 0, 0, st.Lasts
+		if st.Ideal {
+			c.total = 0
+		}
+		clear(c.dnow)
+		clear(c.dtotal)
+		if !st.Ideal {
+			for j := range st.Slopes {
+				c.dtotal[j] = st.Slopes[j].Lasts
+			}
+		}
+		c.set()
+	}
+	var err error
+	switch {
+	case st.Ideal:
+		err = s.advance(i, 1)
+	case st.Lasts == 0:
+		s.l.generator(s.needVals(), st.Coef)
+		s.slideEnd(st)
+		s.pass(st)
+	case s.exact(st):
+		err = s.playExact(i)
+	default:
+		err = s.playShaped(i)
+	}
+	if err == nil && opens {
+		err = s.handRest()
+		c.running, c.done = false, true
+	}
+	return err
+}
+
+func (s *Solver) needVals() []float64 {
+	s.vals = sized(s.vals, len(s.l.col))
+	return s.vals
+}
+
+// playExact steps by propagators from sample to sample.
+func (s *Solver) playExact(i int) error {
+	st := &s.stretches[i]
+	c := &s.clock
+	pos := 0.0
+	moved := false
+	start := c.now
+	for c.due(start + st.Lasts) {
+		step := c.at(c.next) - start - pos
+		if step > c.same {
+			if math.Abs(step-c.step) <= c.same {
+				step = c.step
+			}
+			if err := s.advance(i, step); err != nil {
+				return err
+			}
+			pos += step
+			moved = true
+		}
+		if err := s.handDuring(st); err != nil {
+			return err
+		}
+	}
+	rest := st.Lasts - pos
+	if !moved || rest > c.same {
+		if moved && math.Abs(rest-c.step) <= c.same {
+			rest = c.step
+		}
+		if err := s.advance(i, rest); err != nil {
+			return err
+		}
+	}
+	if s.slides(st) {
+		s.l.generator(s.needVals(), st.Coef)
+		s.slideEnd(st)
+	}
+	s.pass(st)
+	return nil
+}
+
+// slides tells whether the duration depends on a direction.
+func (s *Solver) slides(st *Stretch) bool {
+	for j := range st.Slopes {
+		if st.Slopes[j].Lasts != 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// slideEnd adds L x ∂lasts to the tangents; s.vals holds L.
+func (s *Solver) slideEnd(st *Stretch) {
+	if !s.slides(st) {
+		return
+	}
+	n := s.l.n
+	s.l.times(s.y[:n], s.vals, s.x[:n])
+	for j := range st.Slopes {
+		if d := st.Slopes[j].Lasts; d != 0 {
+			for i, v := range s.y[:n] {
+				s.x[(1+j)*n+i] += v * d
+			}
+		}
+	}
+}
+
+// playShaped integrates in time.
+func (s *Solver) playShaped(i int) error {
+	st := &s.stretches[i]
+	c := &s.clock
+	n := s.l.n
+	w := &s.taylor
+	w.prepare(s.l, st, s.k, orderFor(s.perTime*st.Lasts))
+	f := field{st, s.theta, s.dtheta}
+	start := c.now
+	err := w.integrate(s.ctx, &f, s.x, st.Lasts, s.perTime*st.Lasts, &s.stats, func(from, step float64) error {
+		end := start + from + step
+		if from+step >= st.Lasts {
+			end = start + st.Lasts
+		}
+		for c.due(end) {
+			tau := math.Max(c.at(c.next)-start-from, 0)
+			w.at(s.out, tau)
+			w.slopeAt(s.y, tau)
+			fraction := float64(c.next) / float64(c.samples-1)
+			for j := 0; j < s.k; j++ {
+				d := fraction*c.dtotal[j] - c.dnow[j]
+				for i := 0; d != 0 && i < n; i++ {
+					s.out[(1+j)*n+i] += s.y[i] * d
+				}
+			}
+			if err := s.handOut(); err != nil {
+				return err
+			}
+		}
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	if s.slides(st) {
+		w.coefficients(&f, st.Lasts, 0)
+		copy(s.needVals(), w.vals)
+		s.l.times(s.y[:n], s.vals, s.x[:n])
+		for i := range w.driven {
+			w.driven[i].add(s.y[:n], s.x[:n], w.driven[i].f[0])
+		}
+		for j := range st.Slopes {
+			if d := st.Slopes[j].Lasts; d != 0 {
+				for i, v := range s.y[:n] {
+					s.x[(1+j)*n+i] += v * d
+				}
+			}
+		}
+	}
+	s.pass(st)
+	return nil
+}
+
+// handDuring hands out the state at the next sample's time within a constant
+// stretch.
+func (s *Solver) handDuring(st *Stretch) error {
+	c := &s.clock
+	n := s.l.n
+	copy(s.out, s.x)
+	slid := false
+	fraction := float64(c.next) / float64(c.samples-1)
+	for j := 0; j < s.k; j++ {
+		d := fraction*c.dtotal[j] - c.dnow[j]
+		if d == 0 {
+			continue
+		}
+		if !slid {
+			s.l.generator(s.needVals(), st.Coef)
+			s.l.times(s.y[:n], s.vals, s.x[:n])
+			slid = true
+		}
+		for i, v := range s.y[:n] {
+			s.out[(1+j)*n+i] += v * d
+		}
+	}
+	return s.handOut()
+}
+
+// handRest hands out the state for all samples that are left.
+func (s *Solver) handRest() error {
+	for s.clock.next < s.clock.samples {
+		copy(s.out, s.x)
+		if err := s.handOut(); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func (s *Solver) handOut() error {
+	s.clock.next++
+	return s.deliver(s.clock.next - 1)
+}
+
+func (s *Solver) hand(sample int, _ []float64, _ float64) error {
+	copy(s.out, s.x)
+	return s.deliver(sample)
+}
+
+// deliver checks the state in s.out and emits it.
+func (s *Solver) deliver(sample int) error {
+	n := s.l.n
+	x := s.out[:n]
+	if !allFinite(s.out[:(1+s.k)*n]) {
+		return errors.New("lindblad: the state is no longer finite: a coefficient is too large")
+	}
+	s.stats.TraceError = math.Max(s.stats.TraceError, math.Abs(s.l.trace(x)-s.trace))
+	if low, repaired := s.cone.keep(s.l, x); repaired {
+		s.stats.Projections++
+		s.stats.LowestFound = math.Min(s.stats.LowestFound, low)
+		if -low > s.accuracy {
+			s.warn(fmt.Sprintf("a state had the eigenvalue %.1g and was replaced by the nearest density matrix", low))
+		}
+	}
+	return s.emit(sample, x, s.dx)
+}
