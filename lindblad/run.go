@@ -70,7 +70,8 @@ type clock struct {
 	next    int
 	samples int
 	step    float64
-	same    float64 // times closer than this are equal
+	same    float64   // times closer than this are equal
+	times   []float64 // given times; nil: equally spaced ones
 }
 
 // NewSolver returns a solver with memory m, which may be nil.
@@ -129,7 +130,9 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 	if err := checkNodes(order, len(stretches)); err != nil {
 		return err
 	}
-	if rec.Samples < 0 || rec.Samples == 1 {
+	if rec.Times != nil {
+		rec.Samples = len(rec.Times)
+	} else if rec.Samples < 0 || rec.Samples == 1 {
 		return fmt.Errorf("lindblad: %d samples; 0 or at least 2 are wanted", rec.Samples)
 	}
 	if rec.During >= len(stretches) {
@@ -199,7 +202,7 @@ func (s *Solver) total(order []Node, times float64, sum *float64, slopes []float
 func (s *Solver) startClock(order []Node) {
 	c := &s.clock
 	c.running, c.done = s.rec.During < 0 && s.rec.Samples > 0, false
-	c.now, c.lost, c.next, c.samples = 0, 0, 0, s.rec.Samples
+	c.now, c.lost, c.next, c.samples, c.times = 0, 0, 0, s.rec.Samples, s.rec.Times
 	c.dnow, c.dtotal = zeroed(c.dnow, s.k), zeroed(c.dtotal, s.k)
 	c.total = 0
 	shaped := s.total(order, 1, &c.total, c.dtotal)
@@ -212,7 +215,7 @@ func (s *Solver) startClock(order []Node) {
 
 func (c *clock) set() {
 	c.step = 0
-	if c.samples > 1 {
+	if c.samples > 1 && c.times == nil {
 		c.step = c.total / float64(c.samples-1)
 	}
 	c.same = 1e-13 * c.total
@@ -220,7 +223,19 @@ func (c *clock) set() {
 
 // at is the time of sample i.
 func (c *clock) at(i int) float64 {
+	if c.times != nil {
+		return c.times[i]
+	}
 	return c.total * (float64(i) / float64(c.samples-1))
+}
+
+// fraction is what sample i moves by when the recorded duration grows by one:
+// given times stand still.
+func (c *clock) fraction(i int) float64 {
+	if c.times != nil {
+		return 0
+	}
+	return float64(i) / float64(c.samples-1)
 }
 
 // due tells whether the next sample lies before time t, and not at it.
@@ -404,7 +419,7 @@ func (s *Solver) playShaped(i int) error {
 			tau := math.Max(c.at(c.next)-start-from, 0)
 			w.at(s.out, tau)
 			w.slopeAt(s.y, tau)
-			fraction := float64(c.next) / float64(c.samples-1)
+			fraction := c.fraction(c.next)
 			for j := 0; j < s.k; j++ {
 				d := fraction*c.dtotal[j] - c.dnow[j]
 				for i := 0; d != 0 && i < n; i++ {
@@ -446,7 +461,7 @@ func (s *Solver) handDuring(st *Stretch) error {
 	n := s.l.n
 	copy(s.out, s.x)
 	slid := false
-	fraction := float64(c.next) / float64(c.samples-1)
+	fraction := c.fraction(c.next)
 	for j := 0; j < s.k; j++ {
 		d := fraction*c.dtotal[j] - c.dnow[j]
 		if d == 0 {

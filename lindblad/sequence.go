@@ -62,6 +62,9 @@ type Node struct {
 type Record struct {
 	Samples int // 0: the end of the sequence only; n > 1: n equally spaced times from 0 to the end
 	During  int // −1: samples span the whole sequence; else the index of a stretch: its first run
+	// Times, when not nil, are the recorded times (s, not decreasing, within the
+	// record) in place of equally spaced ones; Samples is then ignored.
+	Times []float64
 }
 
 func (l *Layout) checkStretch(i int, s *Stretch, rotors, directions int) error {
