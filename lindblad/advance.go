@@ -1,113 +1,91 @@
 package lindblad
 
-// parts is a propagator Q = P − 1 and its slopes, nil where zero.
-type parts struct {
-	q []float64
-	e [][]float64
+// propagator is Q = exp(Lτ) − 1 with its slopes along the directions that L
+// depends on.
+type propagator struct {
+	duration   float64
+	q          full
+	directions []int32
+	worst      float64 // how far it may lead out of the cone: rounding
+}
+
+// slots holds the propagators of one stretch that this run used last.
+type slots struct {
+	list [4]propagator
+	used int
+	next int
 }
 
 // advance carries the state through a constant stretch for a duration (1 for
 // an ideal rotation).
 func (s *Solver) advance(i int, duration float64) error {
-	st := &s.stretches[i]
-	if s.l.n > denseLimit { // an ideal rotation of a large state: integrate over unit time
-		c := *st
+	if !s.dense(&s.stretches[i]) {
+		c := s.stretches[i]
 		c.Ideal = false
 		c.Lasts = duration
-		s.taylor.prepare(s.l, &c, s.k, orderFor(0.1*s.accuracy))
+		accuracy := 0.1 * s.accuracy
+		s.taylor.prepare(s.l, &c, s.k, orderFor(accuracy))
 		f := field{&c, s.theta, s.dtheta}
-		return s.taylor.integrate(s.ctx, &f, s.x, duration, 0.1*s.accuracy, &s.stats, func(float64, float64) error { return nil })
+		return s.taylor.integrate(s.ctx, &f, s.x, duration, accuracy, &s.stats, func(float64, float64) error { return nil })
 	}
-	p := s.propagator(st, duration)
-	s.apply(p)
+	s.apply(s.propagator(i, duration))
 	return nil
 }
 
 // apply sets x += Qx for value and tangents.
-func (s *Solver) apply(p parts) {
+func (s *Solver) apply(p *propagator) {
 	n := s.l.n
 	s.stats.Applied++
 	for q := s.k; q >= 0; q-- {
-		x := s.x[q*n : (q+1)*n]
-		y := s.y[q*n : (q+1)*n]
-		matVec(y, p.q, x, n, false)
-		if q > 0 && p.e[q-1] != nil {
-			matVec(y, p.e[q-1], s.x[:n], n, true)
-		}
+		p.q.times(s.y[q*n:], 0, s.x[q*n:], false)
 	}
-	for i, v := range s.y[:(1+s.k)*n] {
-		s.x[i] += v
+	for m, j := range p.directions {
+		p.q.times(s.y[(1+int(j))*n:], 1+m, s.x, true)
 	}
-}
-
-func matVec(y, a, x []float64, n int, add bool) {
-	for i := range y[:n] {
-		var v float64
-		for j, w := range a[i*n : i*n+n] {
-			v += w * x[j]
-		}
-		if add {
-			y[i] += v
-		} else {
-			y[i] = v
-		}
+	x, y := s.x[:(1+s.k)*n], s.y[:(1+s.k)*n]
+	for i := range x {
+		x[i] += y[i]
 	}
 }
 
-// propagator finds or computes exp(Lτ) − 1 and its slopes along the directions
-// that the coefficients depend on.
-func (s *Solver) propagator(st *Stretch, duration float64) parts {
-	n := s.l.n
-	p := parts{e: make([][]float64, s.k)}
-	p.q = s.memory.get(s.l, s.keyOf(st, -1, duration))
-	var missing []int
+// propagator finds or computes the propagator of stretch i over a duration.
+func (s *Solver) propagator(i int, duration float64) *propagator {
+	w := &s.slots[i]
+	for j := range w.list[:w.used] {
+		if p := &w.list[j]; p.duration == duration {
+			return p
+		}
+	}
+	p := &w.list[w.next]
+	w.next = (w.next + 1) % len(w.list)
+	w.used = min(w.used+1, len(w.list))
+	p.duration = duration
+	p.directions = p.directions[:0]
+
+	st := &s.stretches[i]
+	s.key = append(append(s.key[:0], duration), st.Coef...)
 	for j := range st.Slopes {
-		if !anyNonZero(st.Slopes[j].Coef) {
-			continue
-		}
-		if p.e[j] = s.memory.get(s.l, s.keyOf(st, j, duration)); p.e[j] == nil {
-			missing = append(missing, j)
+		if anyNonZero(st.Slopes[j].Coef) {
+			p.directions = append(p.directions, int32(j))
+			s.key = append(s.key, st.Slopes[j].Coef...)
 		}
 	}
-	if p.q != nil && len(missing) == 0 {
+	if s.memory.get(s.l, s.key, &p.q, &p.worst) {
 		s.stats.Remembered++
 		return p
 	}
 	s.stats.Exponentials++
-	k := len(missing)
-	s.exp.reset(n, k, s.l.pops)
+	s.exp.reset(s.l, len(p.directions))
 	vals := s.needVals()
 	s.l.generator(vals, st.Coef)
-	s.l.dense(s.exp.a[:n*n], vals, duration)
-	for m, j := range missing {
+	s.exp.a.put(s.l, 0, vals, duration)
+	for m, j := range p.directions {
 		s.l.generator(vals, st.Slopes[j].Coef)
-		s.l.dense(s.exp.a[(1+m)*n*n:(2+m)*n*n], vals, duration)
+		s.exp.a.put(s.l, 1+m, vals, duration)
 	}
-	r := s.exp.run(k)
-	p.q = append([]float64(nil), r[:n*n]...)
-	s.memory.put(s.l, s.keyOf(st, -1, duration), p.q)
-	for m, j := range missing {
-		p.e[j] = append([]float64(nil), r[(1+m)*n*n:(2+m)*n*n]...)
-		s.memory.put(s.l, s.keyOf(st, j, duration), p.e[j])
-	}
+	q, squarings := s.exp.run(s.l.pops)
+	p.q.copyFrom(q)
+	p.worst = rounding(s.l.n, squarings)
+	s.memory.put(s.l, s.key, q, p.worst)
 	return p
-}
-
-// keyOf is the key of a propagator (direction −1) or of its slope.
-func (s *Solver) keyOf(st *Stretch, direction int, duration float64) []float64 {
-	s.key = append(append(s.key[:0], duration), st.Coef...)
-	if direction >= 0 {
-		s.key = append(s.key, st.Slopes[direction].Coef...)
-	}
-	return s.key
-}
-
-// dense spreads a generator on the pattern, times f, over a full matrix.
-func (l *Layout) dense(a, vals []float64, f float64) {
-	clear(a)
-	for i := 0; i < l.n; i++ {
-		for e := l.start[i]; e < l.start[i+1]; e++ {
-			a[i*l.n+int(l.col[e])] = vals[e] * f
-		}
-	}
 }

@@ -2,14 +2,12 @@ package lindblad
 
 import "math"
 
-// The exponential of a matrix A of n×n by products only: Taylor of degree 16
-// in the scheme of Paterson & Stockmeyer (SIAM J. Comput. 2, 60, 1973), six
-// products, of A/2^s, then s squarings. It is kept as Q = exp(A) − 1 and
-// squared as Q ← 2Q + Q², which keeps slow rates beside fast ones. After each
-// squaring the population rows of every column are made to sum to zero, so
-// that no trace is lost. Derivatives come by products of pairs
-//
-//	(A, E)(B, F) = (AB, AF + EB).
+// The exponential of a matrix A by products only: Taylor of degree 16 in the
+// scheme of Paterson & Stockmeyer (SIAM J. Comput. 2, 60, 1973), six products,
+// of A/2^s, then s squarings. It is kept as Q = exp(A) − 1 and squared as
+// Q ← 2Q + Q², which keeps slow rates beside fast ones. After each squaring the
+// population rows of every column are made to sum to zero, so that no trace is
+// lost. Derivatives come by products of pairs (A, E)(B, F) = (AB, AF + EB).
 
 // radius is where the Taylor polynomial of degree 16 is exact to double
 // precision (Al-Mohy & Higham, SIAM J. Sci. Comput. 33, 488, 2011, table 3.1).
@@ -23,150 +21,208 @@ var inverseFactorial = func() (c [17]float64) {
 	return
 }()
 
-// exponential is the workspace. Each of the matrices has 1 + k parts: the
-// value and its derivatives along k directions.
+// exponential is the workspace.
 type exponential struct {
-	n    int
-	pops []int32
-
-	a, a2, a3, a4, y, z []float64
+	a, a2, a3, a4, y, z full
 }
 
-func (w *exponential) reset(n, k int, pops []int32) {
-	w.n, w.pops = n, pops
-	for _, m := range []*[]float64{&w.a, &w.a2, &w.a3, &w.a4, &w.y, &w.z} {
-		*m = sized(*m, (1+k)*n*n)
+// reset prepares w.a for a generator and k derivatives; put them there.
+func (w *exponential) reset(l *Layout, k int) {
+	for _, m := range []*full{&w.a, &w.a2, &w.a3, &w.a4, &w.y, &w.z} {
+		m.reset(l.n, k)
 	}
+	w.a.likeLayout(l)
 }
 
-// run returns Q and derivatives of the exponential of w.a, in w.a's layout.
-// The result is overwritten by the next run.
-func (w *exponential) run(k int) []float64 {
-	n := w.n
-	nn := n * n
-	w.multiply(w.a2, w.a, w.a, k)
-	w.multiply(w.a3, w.a2, w.a, k)
-	size := math.Min(norm1(w.a[:nn], n), math.Max(math.Sqrt(norm1(w.a2[:nn], n)), math.Cbrt(norm1(w.a3[:nn], n))))
-	for j := 1; j <= k; j++ {
-		// The derivative's norm counts with A's: its series converges alike.
-		_ = j
-	}
+// run returns Q with derivatives for the matrix w.a, and how many squarings it
+// took. The result is overwritten by the next run.
+func (w *exponential) run(pops []int32) (*full, int) {
+	w.a2.multiply(&w.a, &w.a)
+	w.a3.multiply(&w.a2, &w.a)
+	size := math.Min(w.a.norm(), math.Max(math.Sqrt(w.a2.norm()), math.Cbrt(w.a3.norm())))
 	s := 0
 	if size > radius {
 		s = int(math.Ceil(math.Log2(size / radius)))
 	}
 	if s > 0 {
 		f := math.Ldexp(1, -s)
-		scale(w.a, f)
-		scale(w.a2, f*f)
-		scale(w.a3, f*f*f)
+		w.a.scale(f)
+		w.a2.scale(f * f)
+		w.a3.scale(f * f * f)
 	}
-	w.multiply(w.a4, w.a2, w.a2, k)
+	w.a4.multiply(&w.a2, &w.a2)
 	c := &inverseFactorial
-	y, z := w.y, w.z
-	for i := range y {
-		y[i] = c[16]*w.a4[i] + c[15]*w.a3[i] + c[14]*w.a2[i] + c[13]*w.a[i]
-	}
-	addIdentity(y, n, c[12])
+	y, z := &w.y, &w.z
+	y.lo, y.hi = append(y.lo[:0], w.a4.lo...), append(y.hi[:0], w.a4.hi...)
+	y.sum(c[16], &w.a4, w, c[15], c[14], c[13], c[12])
 	for b := 8; b >= 0; b -= 4 {
-		w.multiply(z, y, w.a4, k)
-		for i := range z {
-			z[i] += c[b+3]*w.a3[i] + c[b+2]*w.a2[i] + c[b+1]*w.a[i]
+		z.multiply(y, &w.a4)
+		d := c[b]
+		if b == 0 {
+			d = 0
 		}
-		if b > 0 {
-			addIdentity(z, n, c[b])
-		}
+		z.sum(1, z, w, c[b+3], c[b+2], c[b+1], d)
 		y, z = z, y
 	}
-	w.conserve(y, k)
-	for ; s > 0; s-- {
-		w.multiply(z, y, y, k)
-		for i := range z {
-			z[i] += 2 * y[i]
-		}
+	y.conserve(pops)
+	for i := s; i > 0; i-- {
+		z.multiply(y, y)
+		z.addTo(y, 2)
 		y, z = z, y
-		w.conserve(y, k)
+		y.conserve(pops)
 	}
-	w.y, w.z = y, z
-	return y
+	return y, s
 }
 
-// multiply sets c = a·b for matrices with derivatives.
-func (w *exponential) multiply(c, a, b []float64, k int) {
-	nn := w.n * w.n
-	product(c[:nn], a[:nn], b[:nn], w.n, false)
-	for j := 1; j <= k; j++ {
-		d := c[j*nn : (j+1)*nn]
-		product(d, a[:nn], b[j*nn:(j+1)*nn], w.n, false)
-		product(d, a[j*nn:(j+1)*nn], b[:nn], w.n, true)
-	}
-}
-
-// conserve makes the population rows of each column sum to zero.
-func (w *exponential) conserve(q []float64, k int) {
-	n := w.n
-	for j := 0; j <= k; j++ {
-		conserve(q[j*n*n:(j+1)*n*n], n, w.pops)
-	}
-}
-
-func conserve(q []float64, n int, pops []int32) {
-	for c := 0; c < n; c++ {
-		var sum, most float64
-		at := -1
-		for _, p := range pops {
-			v := q[int(p)*n+c]
-			sum += v
-			if m := math.Abs(v); m > most {
-				most, at = m, int(p)*n+c
-			}
+// sum sets x = f·y + c3·A³ + c2·A² + c1·A + c0.
+func (x *full) sum(f float64, y *full, w *exponential, c3, c2, c1, c0 float64) {
+	if x.n <= smallest {
+		a, a2, a3, v := w.a.a, w.a2.a[:len(x.a)], w.a3.a[:len(x.a)], y.a[:len(x.a)]
+		a = a[:len(x.a)]
+		for i := range x.a {
+			x.a[i] = f*v[i] + (c3*a3[i] + c2*a2[i] + c1*a[i])
 		}
-		if at >= 0 {
-			q[at] -= sum
-		}
-	}
-}
-
-// product sets c = a·b, or c += a·b.
-func product(c, a, b []float64, n int, add bool) {
-	if !add {
-		clear(c)
-	}
-	for i := 0; i < n; i++ {
-		ci := c[i*n : i*n+n]
-		for k := 0; k < n; k++ {
-			v := a[i*n+k]
-			if v == 0 {
-				continue
-			}
-			bk := b[k*n : k*n+n]
-			for j, x := range bk {
-				ci[j] += v * x
+	} else {
+		for q := 0; q <= x.k; q++ {
+			xs, ys, a, a2, a3 := x.part(q), y.part(q), w.a.part(q), w.a2.part(q), w.a3.part(q)
+			for i := 0; i < x.m; i++ {
+				row := i * x.m
+				b := i / 4
+				lo, hi := row+int(x.lo[b]), row+int(x.hi[b])
+				if f != 1 || x != y {
+					for j := lo; j < hi; j++ {
+						xs[j] = f * ys[j]
+					}
+				}
+				plus(xs[row:], a3[row:], c3, w.a3.lo[b], w.a3.hi[b])
+				plus(xs[row:], a2[row:], c2, w.a2.lo[b], w.a2.hi[b])
+				plus(xs[row:], a[row:], c1, w.a.lo[b], w.a.hi[b])
 			}
 		}
 	}
+	for i := 0; i < x.n; i++ {
+		x.a[i*x.m+i] += c0
+	}
 }
 
-func norm1(a []float64, n int) float64 {
+func plus(x, y []float64, c float64, lo, hi int32) {
+	if lo >= hi {
+		return
+	}
+	x = x[lo:hi]
+	y = y[lo:][:len(x)]
+	for j, v := range y {
+		x[j] += c * v
+	}
+}
+
+// addTo adds f·y.
+func (x *full) addTo(y *full, f float64) {
+	if x.n <= smallest {
+		ya := y.a[:len(x.a)]
+		for i, v := range ya {
+			x.a[i] += f * v
+		}
+		return
+	}
+	x.widen(y)
+	for q := 0; q <= x.k; q++ {
+		xs, ys := x.part(q), y.part(q)
+		for i := 0; i < x.m; i++ {
+			plus(xs[i*x.m:], ys[i*x.m:], f, y.lo[i/4], y.hi[i/4])
+		}
+	}
+}
+
+// widen lets the intervals of x hold those of y.
+func (x *full) widen(y *full) {
+	for b := range x.lo {
+		lo, hi := x.lo[b], x.hi[b]
+		if lo >= hi {
+			lo, hi = y.lo[b], y.lo[b]
+		}
+		l, h := min(lo, y.lo[b]), max(hi, y.hi[b])
+		if y.lo[b] >= y.hi[b] || l == x.lo[b] && h == x.hi[b] {
+			continue
+		}
+		for q := 0; q <= x.k; q++ {
+			a := x.part(q)
+			for i := 4 * b; i < 4*b+4; i++ {
+				clear(a[i*x.m+int(l) : i*x.m+int(lo)])
+				clear(a[i*x.m+int(hi) : i*x.m+int(h)])
+			}
+		}
+		x.lo[b], x.hi[b] = l, h
+	}
+}
+
+// conserve makes the population rows of each column sum to zero: what rounding
+// left is taken from the largest of them.
+func (x *full) conserve(pops []int32) {
+	for q := 0; q <= x.k; q++ {
+		a := x.part(q)
+		for c := 0; c < x.n; c++ {
+			var sum, most float64
+			at := -1
+			for _, p := range pops {
+				if x.n > smallest && (int32(c) < x.lo[p/4] || int32(c) >= x.hi[p/4]) {
+					continue
+				}
+				v := a[int(p)*x.m+c]
+				sum += v
+				if v < 0 {
+					v = -v
+				}
+				if v > most {
+					most, at = v, int(p)*x.m+c
+				}
+			}
+			if at >= 0 {
+				a[at] -= sum
+			}
+		}
+	}
+}
+
+// norm is the largest column sum of absolute values of the matrix itself.
+func (x *full) norm() float64 {
 	var most float64
-	for j := 0; j < n; j++ {
-		var s float64
-		for i := 0; i < n; i++ {
-			s += math.Abs(a[i*n+j])
+	if x.n <= smallest {
+		n := x.n
+		for j := 0; j < n; j++ {
+			var s float64
+			for i := j; i < n*n; i += n {
+				s += math.Abs(x.a[i])
+			}
+			most = max(most, s)
 		}
-		most = math.Max(most, s)
+		return most
+	}
+	sums := make([]float64, x.m)
+	for i := 0; i < x.n; i++ {
+		for j := x.lo[i/4]; j < x.hi[i/4]; j++ {
+			sums[j] += math.Abs(x.a[i*x.m+int(j)])
+		}
+	}
+	for _, s := range sums {
+		most = max(most, s)
 	}
 	return most
 }
 
-func scale(a []float64, f float64) {
-	for i := range a {
-		a[i] *= f
+func (x *full) scale(f float64) {
+	if x.n <= smallest {
+		for i := range x.a {
+			x.a[i] *= f
+		}
+		return
 	}
-}
-
-func addIdentity(a []float64, n int, v float64) {
-	for i := 0; i < n; i++ {
-		a[i*n+i] += v
+	for q := 0; q <= x.k; q++ {
+		a := x.part(q)
+		for i := 0; i < x.m; i++ {
+			for j := int(x.lo[i/4]); j < int(x.hi[i/4]); j++ {
+				a[i*x.m+j] *= f
+			}
+		}
 	}
 }

@@ -4,14 +4,11 @@ import "math"
 
 // groupMap is the propagator of one pass through a group, and its powers.
 type groupMap struct {
-	exact    bool
-	lasts    float64
-	stretchs int        // plays of a stretch in one pass
-	powers   []product_ // 2^i passes
+	exact  bool
+	lasts  float64
+	plays  int     // of stretches, in one pass
+	powers []*full // of 2^i passes, with slopes along all directions
 }
-
-// product_ is a propagator with slopes for all directions, one after the other.
-type product_ = []float64
 
 // playGroup repeats a group: by powers of its propagator where no sample falls
 // inside and that is cheaper, else pass by pass.
@@ -50,9 +47,9 @@ func (s *Solver) powersPay(g *groupMap, m int) bool {
 	bits := math.Log2(float64(m))
 	build := bits * n * n * n * (1 + 2*k)
 	if g.powers == nil {
-		build += float64(g.stretchs) * n * n * n * (1 + 2*k)
+		build += float64(g.plays) * n * n * n * (1 + 2*k)
 	}
-	return build+bits*n*n*(1+2*k) < float64(m)*float64(g.stretchs)*n*n*(1+2*k)
+	return build+bits*n*n*(1+2*k) < float64(m)*float64(g.plays)*n*n*(1+2*k)
 }
 
 func (s *Solver) group(node *Node) *groupMap {
@@ -76,8 +73,8 @@ func (s *Solver) measure(order []Node, times int, g *groupMap) {
 			continue
 		}
 		st := &s.stretches[n.Stretch]
-		g.exact = g.exact && s.exact(st)
-		g.stretchs += times
+		g.exact = g.exact && s.dense(st)
+		g.plays += times
 		if !st.Ideal {
 			g.lasts += float64(times) * st.Lasts
 		}
@@ -87,102 +84,106 @@ func (s *Solver) measure(order []Node, times int, g *groupMap) {
 // applyPower applies m passes of a group.
 func (s *Solver) applyPower(node *Node, g *groupMap, m int) {
 	if g.powers == nil {
-		one := s.zeroMap()
-		s.compose(&one, node.Group)
-		g.powers = append(g.powers, one)
+		g.powers = append(g.powers, s.compose(new(full), node.Group))
 	}
 	for 1<<len(g.powers) <= m {
 		last := g.powers[len(g.powers)-1]
-		next := s.zeroMap()
-		s.chain(next, last, last)
-		g.powers = append(g.powers, next)
+		g.powers = append(g.powers, s.chain(last, last))
 	}
-	n := s.l.n
-	p := parts{e: make([][]float64, s.k)}
+	var p propagator
+	for j := range s.k {
+		p.directions = append(p.directions, int32(j))
+	}
 	for i := range g.powers {
 		if m>>i&1 == 1 {
-			p.q = g.powers[i][:n*n]
-			for j := range p.e {
-				p.e[j] = g.powers[i][(1+j)*n*n : (2+j)*n*n]
-			}
-			s.apply(p)
+			p.q = *g.powers[i]
+			s.apply(&p)
 		}
 	}
 }
 
-func (s *Solver) zeroMap() product_ { return make([]float64, (1+s.k)*s.l.n*s.l.n) }
-
-// compose multiplies the maps of an order onto *m from the left.
-func (s *Solver) compose(m *product_, order []Node) {
+// compose returns the map of an order after the map m; an m without size is
+// the identity.
+func (s *Solver) compose(m *full, order []Node) *full {
 	for i := range order {
 		node := &order[i]
-		if node.Group != nil {
-			if node.Repeat == 0 || len(node.Group) == 0 {
-				continue
-			}
-			power := s.zeroMap()
-			s.compose(&power, node.Group)
-			for r := node.Repeat; r > 0; r >>= 1 {
-				if r&1 == 1 {
-					t := s.zeroMap()
-					s.chain(t, power, *m)
-					*m = t
-				}
-				if r > 1 {
-					t := s.zeroMap()
-					s.chain(t, power, power)
-					power = t
-				}
-			}
+		if node.Group == nil {
+			m = s.chain(s.stretchMap(node.Stretch), m)
 			continue
 		}
-		t := s.zeroMap()
-		s.chain(t, s.stretchMap(node.Stretch), *m)
-		*m = t
-	}
-}
-
-// stretchMap is the map of a constant stretch with the slopes of its duration.
-func (s *Solver) stretchMap(i int) product_ {
-	st := &s.stretches[i]
-	n := s.l.n
-	m := s.zeroMap()
-	duration := st.Lasts
-	if st.Ideal {
-		duration = 1
-	}
-	p := s.propagator(st, duration)
-	copy(m, p.q)
-	for j := range p.e {
-		if p.e[j] != nil {
-			copy(m[(1+j)*n*n:], p.e[j])
+		if node.Repeat == 0 || len(node.Group) == 0 {
+			continue
 		}
-	}
-	if st.Ideal || !s.slides(st) {
-		return m
-	}
-	s.l.generator(s.needVals(), st.Coef)
-	lp := make([]float64, n*n)
-	s.l.dense(lp, s.vals, 1)
-	product(lp, append([]float64(nil), lp...), p.q, n, true) // L + LQ
-	for j := range st.Slopes {
-		if d := st.Slopes[j].Lasts; d != 0 {
-			for i, v := range lp {
-				m[(1+j)*n*n+i] += v * d
+		power := s.compose(new(full), node.Group)
+		for r := node.Repeat; r > 0; r >>= 1 {
+			if r&1 == 1 {
+				m = s.chain(power, m)
+			}
+			if r > 1 {
+				power = s.chain(power, power)
 			}
 		}
 	}
 	return m
 }
 
-// chain sets c to the map a after b: Q = Q_a + Q_b + Q_a Q_b.
-func (s *Solver) chain(c, a, b product_) {
-	s.exp.n, s.exp.pops = s.l.n, s.l.pops
-	s.exp.multiply(c, a, b, s.k)
-	for i := range c {
-		c[i] += a[i] + b[i]
+// stretchMap is the map of a constant stretch with the slopes of its duration.
+func (s *Solver) stretchMap(i int) *full {
+	st := &s.stretches[i]
+	duration := st.Lasts
+	if st.Ideal {
+		duration = 1
 	}
-	s.exp.conserve(c, s.k)
+	p := s.propagator(i, duration)
+	m := new(full)
+	m.reset(s.l.n, s.k)
+	clear(m.a)
+	copy(m.lo, p.q.lo)
+	copy(m.hi, p.q.hi)
+	copy(m.part(0), p.q.part(0))
+	for q, j := range p.directions {
+		copy(m.part(1+int(j)), p.q.part(1+q))
+	}
+	if st.Ideal || !s.slides(st) {
+		return m
+	}
+	// ∂P/∂lasts = L + LQ
+	var l, lq full
+	l.reset(s.l.n, 0)
+	l.likeLayout(s.l)
+	s.l.generator(s.needVals(), st.Coef)
+	l.put(s.l, 0, s.vals, 1)
+	lq.reset(s.l.n, 0)
+	clear(lq.a)
+	p.q.k = 0
+	lq.multiply(&l, &p.q)
+	p.q.k = len(p.directions)
+	m.widen(&lq)
+	m.widen(&l)
+	for j := range st.Slopes {
+		if d := st.Slopes[j].Lasts; d != 0 {
+			e := m.part(1 + j)
+			for i := range e {
+				e[i] += d * (l.a[i] + lq.a[i])
+			}
+		}
+	}
+	return m
+}
+
+// chain returns the map a after b: Q = Q_a + Q_b + Q_a Q_b.
+func (s *Solver) chain(a, b *full) *full {
+	if b.n == 0 {
+		return a
+	}
+	c := new(full)
+	c.reset(s.l.n, s.k)
+	clear(c.a)
+	c.multiply(a, b)
+	c.addTo(a, 1)
+	c.addTo(b, 1)
+	c.conserve(s.l.pops)
+	return c
 }
 
 // passGroup moves clock and rotors on by m passes.

@@ -73,12 +73,13 @@ type placed struct {
 // builder is the scratch space for making a layout.
 type builder struct {
 	columns
-	queue   []int32
-	entries []triplet
-	sorted  []triplet
-	count   []int32
-	atSlab  []int32
-	valSlab []float64
+	ordering ordering
+	queue    []int32
+	entries  []triplet
+	sorted   []triplet
+	count    []int32
+	atSlab   []int32
+	valSlab  []float64
 }
 
 type triplet struct {
@@ -155,12 +156,8 @@ func (l *Layout) place(pieces, counters int) {
 	l.reach = len(l.queue)
 	l.n = l.reach + counters
 	l.global = append(l.global[:0], l.queue...)
-	l.pops = l.pops[:0]
 	for i, g := range l.global {
 		l.index[g] = i
-		if int(g) < l.levels {
-			l.pops = append(l.pops, int32(i))
-		}
 	}
 	for i := range l.entries {
 		e := &l.entries[i]
@@ -171,8 +168,17 @@ func (l *Layout) place(pieces, counters int) {
 			e.row = int32(l.index[e.row])
 		}
 	}
+	if l.reach > smallest { // below, full matrices are as good
+		l.reorder()
+	}
 	l.sortBy(l.n, func(t *triplet) int32 { return t.col })
 	l.sortBy(l.n, func(t *triplet) int32 { return t.row })
+	l.pops = l.pops[:0]
+	for i, g := range l.global {
+		if int(g) < l.levels {
+			l.pops = append(l.pops, int32(i))
+		}
+	}
 
 	l.start = zeroed(l.start, l.n+1)
 	l.col = l.col[:0]
@@ -200,6 +206,27 @@ func (l *Layout) place(pieces, counters int) {
 	}
 	for i := 0; i < l.n; i++ {
 		l.start[i+1] += l.start[i]
+	}
+}
+
+// reorder numbers the coordinates anew. The search has left the entries sorted
+// by column.
+func (l *Layout) reorder() {
+	order := l.ordering.find(l.reach, l.entries)
+	place := l.ordering.edge
+	for i, old := range order {
+		l.global[i] = l.queue[old]
+		place[old] = int32(i)
+	}
+	for i, g := range l.global {
+		l.index[g] = i
+	}
+	for i := range l.entries {
+		e := &l.entries[i]
+		e.col = place[e.col]
+		if int(e.row) < l.reach {
+			e.row = place[e.row]
+		}
 	}
 }
 

@@ -20,7 +20,8 @@ type remembered struct {
 	layout *Layout
 	made   uint64 // the layout's making: Layout.Set makes it another
 	key    []float64
-	matrix []float64
+	matrix full
+	worst  float64
 }
 
 // NewMemory returns a memory of at most the given number of bytes (0: 64 MiB).
@@ -56,32 +57,36 @@ next:
 	return nil
 }
 
-// get returns the remembered matrix or nil. It must not be written to.
-func (m *Memory) get(l *Layout, key []float64) []float64 {
+// get copies the remembered matrix into q.
+func (m *Memory) get(l *Layout, key []float64, q *full, worst *float64) bool {
 	if m == nil || m.limit == 0 {
-		return nil
+		return false
 	}
 	h := hash(key)
 	m.mu.Lock()
-	defer m.mu.Unlock()
-	if r := find(m.new[h], l, key); r != nil {
-		return r.matrix
-	}
-	r := find(m.old[h], l, key)
+	r := find(m.new[h], l, key)
 	if r == nil {
-		return nil
+		if r = find(m.old[h], l, key); r != nil {
+			m.add(h, r)
+		}
 	}
-	m.add(h, r)
-	return r.matrix
+	m.mu.Unlock()
+	if r == nil {
+		return false
+	}
+	q.copyFrom(&r.matrix)
+	*worst = r.worst
+	return true
 }
 
-// put remembers a copy of matrix.
-func (m *Memory) put(l *Layout, key, matrix []float64) {
-	if m == nil || m.limit == 0 || len(matrix)+len(key) > m.limit {
+// put remembers a copy of q.
+func (m *Memory) put(l *Layout, key []float64, q *full, worst float64) {
+	if m == nil || m.limit == 0 || len(q.a)+len(key) > m.limit {
 		return
 	}
 	h := hash(key)
-	r := &remembered{l, l.made, append([]float64(nil), key...), append([]float64(nil), matrix...)}
+	r := &remembered{layout: l, made: l.made, key: append([]float64(nil), key...), worst: worst}
+	r.matrix.copyFrom(q)
 	m.mu.Lock()
 	defer m.mu.Unlock()
 	if find(m.new[h], l, key) == nil {
@@ -90,7 +95,7 @@ func (m *Memory) put(l *Layout, key, matrix []float64) {
 }
 
 func (m *Memory) add(h uint64, r *remembered) {
-	size := len(r.key) + len(r.matrix) + 16
+	size := len(r.key) + len(r.matrix.a) + 32
 	if m.held+size > m.limit {
 		m.old, m.new, m.held = m.new, map[uint64][]*remembered{}, 0
 	}

@@ -42,7 +42,7 @@ func (a dense) plus(b dense, f complex128) dense {
 	return c
 }
 
-func full(o Operator, n int) dense {
+func matrixOf(o Operator, n int) dense {
 	c := make(dense, n*n)
 	for _, e := range o {
 		c[e.Row*n+e.Col] += e.Value
@@ -58,18 +58,18 @@ func action(p Piece, rho dense, n int) dense {
 	}
 	switch p.kind {
 	case hamiltonian:
-		h := full(p.op, n)
+		h := matrixOf(p.op, n)
 		return h.times(rho, n).plus(rho.times(h, n), -1).plus(make(dense, n*n), 0).times(scaledIdentity(n, -1i), n)
 	case jump:
-		return one(full(p.op, n), full(p.op, n))
+		return one(matrixOf(p.op, n), matrixOf(p.op, n))
 	case jumps:
 		out := make(dense, n*n)
 		for _, o := range p.ops {
-			out = out.plus(one(full(o, n), full(o, n)), 1)
+			out = out.plus(one(matrixOf(o, n), matrixOf(o, n)), 1)
 		}
 		return out
 	case crossJump:
-		a, b := full(p.op, n), full(p.other, n)
+		a, b := matrixOf(p.op, n), matrixOf(p.other, n)
 		return one(a, b).plus(one(b, a), 1)
 	case damping:
 		out := make(dense, n*n)
@@ -202,7 +202,7 @@ func TestCountersCollectExpectations(t *testing.T) {
 	l.generator(vals, []float64{2, 3})
 	l.times(y, vals, x)
 	trace := func(o Operator) float64 {
-		p := full(o, n).times(rho, n)
+		p := matrixOf(o, n).times(rho, n)
 		var s complex128
 		for i := range n {
 			s += p[i*n+i]

@@ -249,3 +249,9 @@ func hermitianEigen(a []complex128, n int) (vec []complex128, val []float64) {
 	}
 	return vec, val
 }
+
+// rounding is how far a propagator of n coordinates after some squarings may
+// lead out of the cone.
+func rounding(n, squarings int) float64 {
+	return float64(n) * math.Ldexp(1e-16, min(squarings, 60))
+}

@@ -39,8 +39,8 @@ type Solver struct {
 	dx      [][]float64
 	out     []float64
 	vals    []float64
-	dvals   []float64
 	key     []float64
+	slots   []slots
 	exp     exponential
 	taylor  taylor
 	cone    cone
@@ -161,6 +161,10 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 		s.dtheta[j] = zeroed(s.dtheta[j], rotors)
 	}
 	s.groups = nil
+	s.slots = sized(s.slots, len(stretches))
+	for i := range s.slots {
+		s.slots[i].used, s.slots[i].next = 0, 0
+	}
 	s.played = 0
 	s.trace = l.trace(x0)
 	s.startClock(order)
@@ -192,7 +196,7 @@ func (s *Solver) total(order []Node, times float64, sum *float64, slopes []float
 		for j := range st.Slopes {
 			slopes[j] += times * st.Slopes[j].Lasts
 		}
-		if !s.exact(st) {
+		if !s.dense(st) {
 			shaped += times * st.Lasts
 		}
 	}
@@ -283,8 +287,8 @@ func (s *Solver) playAll(order []Node) error {
 	return nil
 }
 
-// exact tells whether a stretch has a dense propagator.
-func (s *Solver) exact(st *Stretch) bool { return len(st.Terms) == 0 && s.l.n <= denseLimit }
+// dense tells whether a stretch is carried by dense propagators.
+func (s *Solver) dense(st *Stretch) bool { return len(st.Terms) == 0 && s.l.n <= denseLimit }
 
 // denseLimit is the largest state with dense propagators.
 const denseLimit = 200
@@ -318,8 +322,8 @@ func (s *Solver) playStretch(i int) error {
 		s.l.generator(s.needVals(), st.Coef)
 		s.slideEnd(st)
 		s.pass(st)
-	case s.exact(st):
-		err = s.playExact(i)
+	case s.dense(st):
+		err = s.playConstant(i)
 	default:
 		err = s.playShaped(i)
 	}
@@ -335,8 +339,8 @@ func (s *Solver) needVals() []float64 {
 	return s.vals
 }
 
-// playExact steps by propagators from sample to sample.
-func (s *Solver) playExact(i int) error {
+// playConstant steps by propagators from sample to sample.
+func (s *Solver) playConstant(i int) error {
 	st := &s.stretches[i]
 	c := &s.clock
 	pos := 0.0

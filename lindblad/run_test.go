@@ -213,7 +213,11 @@ func TestSequencesAgainstMatrixExponentials(t *testing.T) {
 			vals := make([]float64, len(l.col))
 			l.generator(vals, st.Coef)
 			a := mat.NewDense(n, n, nil)
-			l.dense(a.RawMatrix().Data, vals, tau)
+			for i := range n {
+				for e := l.start[i]; e < l.start[i+1]; e++ {
+					a.Set(i, int(l.col[e]), vals[e]*tau)
+				}
+			}
 			var e mat.Dense
 			e.Exp(a)
 			return &e
