@@ -26,9 +26,12 @@ func (s *Solver) advance(i int, duration float64) error {
 		accuracy := 0.1 * s.accuracy
 		s.taylor.prepare(s.l, &c, s.k, orderFor(accuracy))
 		f := field{&c, s.theta, s.dtheta}
+		s.watch += accuracy
 		return s.taylor.integrate(s.ctx, &f, s.x, duration, accuracy, &s.stats, func(float64, float64) error { return nil })
 	}
-	s.apply(s.propagator(i, duration))
+	p := s.propagator(i, duration)
+	s.apply(p)
+	s.watch += p.worst
 	return nil
 }
 

@@ -11,6 +11,7 @@ type full struct {
 	n, m, k int
 	a       []float64
 	lo, hi  []int32
+	sums    []float64 // scratch space
 }
 
 // smallest is the size up to which written-out products without intervals and
@@ -99,15 +100,13 @@ func (c *full) multiply(a, b *full) {
 func (c *full) product(a, b *full, r, p, q int, add bool) {
 	x, y, z := a.part(p), b.part(q), c.part(r)
 	switch {
+	case c.n == 4 && add:
+		productAdd4((*[16]float64)(z), (*[16]float64)(x), (*[16]float64)(y))
 	case c.n == 4:
-		if !add {
-			clear(z)
-		}
 		product4((*[16]float64)(z), (*[16]float64)(x), (*[16]float64)(y))
+	case c.n == 9 && add:
+		productAdd9((*[81]float64)(z), (*[81]float64)(x), (*[81]float64)(y))
 	case c.n == 9:
-		if !add {
-			clear(z)
-		}
 		product9((*[81]float64)(z), (*[81]float64)(x), (*[81]float64)(y))
 	case c.n < smallest:
 		if !add {
@@ -124,6 +123,19 @@ func (c *full) product(a, b *full, r, p, q int, add bool) {
 			}
 		}
 		c.productBlocks(a, b, x, y, z)
+	}
+}
+
+// square sets c = 2a + a·a with derivatives.
+func (c *full) square(a *full) {
+	switch {
+	case c.n == 4 && c.k == 0:
+		square4((*[16]float64)(c.a), (*[16]float64)(a.a), (*[16]float64)(a.a))
+	case c.n == 9 && c.k == 0:
+		square9((*[81]float64)(c.a), (*[81]float64)(a.a), (*[81]float64)(a.a))
+	default:
+		c.multiply(a, a)
+		c.addTo(a, 2)
 	}
 }
 

@@ -24,6 +24,7 @@ var inverseFactorial = func() (c [17]float64) {
 // exponential is the workspace.
 type exponential struct {
 	a, a2, a3, a4, y, z full
+	spare               []int32
 }
 
 // reset prepares w.a for a generator and k derivatives; put them there.
@@ -64,12 +65,12 @@ func (w *exponential) run(pops []int32) (*full, int) {
 		z.sum(1, z, w, c[b+3], c[b+2], c[b+1], d)
 		y, z = z, y
 	}
-	y.conserve(pops)
+	w.spare = y.spareRows(w.spare, pops)
+	y.conserve(pops, w.spare)
 	for i := s; i > 0; i-- {
-		z.multiply(y, y)
-		z.addTo(y, 2)
+		z.square(y)
 		y, z = z, y
-		y.conserve(pops)
+		y.conserve(pops, w.spare)
 	}
 	return y, s
 }
@@ -156,32 +157,70 @@ func (x *full) widen(y *full) {
 	}
 }
 
-// conserve makes the population rows of each column sum to zero: what rounding
-// left is taken from the largest of them.
-func (x *full) conserve(pops []int32) {
-	for q := 0; q <= x.k; q++ {
-		a := x.part(q)
-		for c := 0; c < x.n; c++ {
-			var sum, most float64
-			at := -1
-			for _, p := range pops {
-				if x.n > smallest && (int32(c) < x.lo[p/4] || int32(c) >= x.hi[p/4]) {
-					continue
+// conserve makes the population rows of each column sum to zero; what rounding
+// left is taken from the element at the place in spare, see spareRows.
+func (x *full) conserve(pops, spare []int32) {
+	if x.n <= smallest {
+		n := x.n
+		for q := 0; q <= x.k; q++ {
+			a := x.part(q)
+			for c := 0; c < n; c++ {
+				var sum float64
+				for _, p := range pops {
+					sum += a[int(p)*n+c]
 				}
-				v := a[int(p)*x.m+c]
-				sum += v
-				if v < 0 {
-					v = -v
+				if spare[c] < 0 && sum != 0 {
+					spare[c] = x.spareRow(c, pops)
 				}
-				if v > most {
-					most, at = v, int(p)*x.m+c
-				}
-			}
-			if at >= 0 {
-				a[at] -= sum
+				a[max(spare[c], 0)] -= sum
 			}
 		}
+		return
 	}
+	for q := 0; q <= x.k; q++ {
+		a := x.part(q)
+		sums := zeroed(x.sums, x.m)
+		for _, p := range pops {
+			lo, hi := x.lo[p/4], x.hi[p/4]
+			row := a[int(p)*x.m:]
+			for c := lo; c < hi; c++ {
+				sums[c] += row[c]
+			}
+		}
+		for c, sum := range sums[:x.n] {
+			if sum == 0 {
+				continue
+			}
+			if spare[c] < 0 {
+				spare[c] = x.spareRow(c, pops)
+			}
+			a[spare[c]] -= sum
+		}
+		x.sums = sums
+	}
+}
+
+// spareRows finds for each column the element that takes what rounding leaves:
+// of the population rows the one that is largest; −1 where all are zero.
+func (x *full) spareRows(spare, pops []int32) []int32 {
+	spare = sized(spare, x.n)
+	for c := range spare {
+		spare[c] = x.spareRow(c, pops)
+	}
+	return spare
+}
+
+func (x *full) spareRow(c int, pops []int32) int32 {
+	at, most := int32(-1), 0.0
+	for _, p := range pops {
+		if x.n > smallest && (int32(c) < x.lo[p/4] || int32(c) >= x.hi[p/4]) {
+			continue
+		}
+		if v := math.Abs(x.a[int(p)*x.m+c]); v > most {
+			most, at = v, p*int32(x.m)+int32(c)
+		}
+	}
+	return at
 }
 
 // norm is the largest column sum of absolute values of the matrix itself.
@@ -198,7 +237,8 @@ func (x *full) norm() float64 {
 		}
 		return most
 	}
-	sums := make([]float64, x.m)
+	x.sums = zeroed(x.sums, x.m)
+	sums := x.sums
 	for i := 0; i < x.n; i++ {
 		for j := x.lo[i/4]; j < x.hi[i/4]; j++ {
 			sums[j] += math.Abs(x.a[i*x.m+int(j)])

@@ -98,6 +98,7 @@ func (s *Solver) applyPower(node *Node, g *groupMap, m int) {
 		if m>>i&1 == 1 {
 			p.q = *g.powers[i]
 			s.apply(&p)
+			s.watch = math.Inf(1)
 		}
 	}
 }
@@ -182,7 +183,7 @@ func (s *Solver) chain(a, b *full) *full {
 	c.multiply(a, b)
 	c.addTo(a, 1)
 	c.addTo(b, 1)
-	c.conserve(s.l.pops)
+	c.conserve(s.l.pops, c.spareRows(nil, s.l.pops))
 	return c
 }
 

@@ -1,6 +1,9 @@
 package lindblad
 
-import "math"
+import (
+	"fmt"
+	"math"
+)
 
 // cone keeps density matrices positive. The watch is a Cholesky factorisation
 // of ρ + 1e-13, block by block; a state that fails is replaced by the nearest
@@ -253,5 +256,31 @@ func hermitianEigen(a []complex128, n int) (vec []complex128, val []float64) {
 // rounding is how far a propagator of n coordinates after some squarings may
 // lead out of the cone.
 func rounding(n, squarings int) float64 {
-	return float64(n) * math.Ldexp(1e-16, min(squarings, 60))
+	return float64(n) * math.Ldexp(2e-16, min(squarings, 60))
+}
+
+// watchEvery is how far a state may have left the cone before it is checked
+// again; with the shift of the check it stays below 1e-12.
+const watchEvery = 3e-13
+
+// keep guards the state when it may have left the cone.
+func (s *Solver) keep() {
+	if s.watch > watchEvery {
+		s.guard(s.x[:s.l.n])
+	}
+}
+
+// guard brings x back into the cone and keeps the statistics.
+func (s *Solver) guard(x []float64) {
+	s.watch = 0
+	s.stats.TraceError = math.Max(s.stats.TraceError, math.Abs(s.l.trace(x)-s.trace))
+	low, repaired := s.cone.keep(s.l, x)
+	if !repaired {
+		return
+	}
+	s.stats.Projections++
+	s.stats.LowestFound = math.Min(s.stats.LowestFound, low)
+	if -low > s.accuracy {
+		s.warn(fmt.Sprintf("a state had the eigenvalue %.1g and was replaced by the nearest density matrix", low))
+	}
 }

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"sort"
 )
 
 // Settings of a solver. The zero value means the stated defaults.
@@ -41,6 +42,8 @@ type Solver struct {
 	vals    []float64
 	key     []float64
 	slots   []slots
+	ring    [8][4]float64
+	squares [3][16]float64
 	exp     exponential
 	taylor  taylor
 	cone    cone
@@ -56,6 +59,7 @@ type Solver struct {
 	clock     clock
 	played    int
 	trace     float64
+	watch     float64 // how far the state may have left the cone since it was checked
 }
 
 // clock follows the recorded time.
@@ -132,6 +136,9 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 	}
 	if rec.Times != nil {
 		rec.Samples = len(rec.Times)
+		if !allFinite(rec.Times) || !sort.Float64sAreSorted(rec.Times) {
+			return errors.New("lindblad: recorded times must be finite and must not decrease")
+		}
 	} else if rec.Samples < 0 || rec.Samples == 1 {
 		return fmt.Errorf("lindblad: %d samples; 0 or at least 2 are wanted", rec.Samples)
 	}
@@ -167,12 +174,15 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 	}
 	s.played = 0
 	s.trace = l.trace(x0)
+	s.watch = math.Inf(1)
 	s.startClock(order)
 	if err := s.playAll(order); err != nil {
 		return err
 	}
 	if rec.Samples == 0 {
-		return s.hand(0, nil, 0)
+		s.keep()
+		copy(s.out, s.x)
+		return s.deliver(0)
 	}
 	if rec.During >= 0 && !s.clock.done {
 		return fmt.Errorf("lindblad: samples during stretch %d, which the order never plays", rec.During)
@@ -240,6 +250,25 @@ func (c *clock) fraction(i int) float64 {
 		return 0
 	}
 	return float64(i) / float64(c.samples-1)
+}
+
+// lastBefore is the last sample before time t, and not at it; −1 when the clock
+// stands still.
+func (c *clock) lastBefore(t float64) int {
+	if !c.running || c.next >= c.samples {
+		return -1
+	}
+	j := c.samples - 1
+	switch {
+	case c.step > 0:
+		j = int(math.Min(float64(j), math.Ceil((t-c.same)/c.step)+1))
+	case c.times != nil:
+		return sort.SearchFloat64s(c.times, t-c.same) - 1
+	}
+	for j >= 0 && c.at(j) >= t-c.same {
+		j--
+	}
+	return j
 }
 
 // due tells whether the next sample lies before time t, and not at it.
@@ -345,21 +374,29 @@ func (s *Solver) playConstant(i int) error {
 	c := &s.clock
 	pos := 0.0
 	moved := false
-	start := c.now
-	for c.due(start + st.Lasts) {
+	start, usual := c.now, c.step
+	for last := c.lastBefore(start + st.Lasts); c.next <= last; {
 		step := c.at(c.next) - start - pos
 		if step > c.same {
-			if math.Abs(step-c.step) <= c.same {
-				step = c.step
+			if math.Abs(step-usual) <= c.same {
+				step = usual
 			}
+			usual = step
 			if err := s.advance(i, step); err != nil {
 				return err
 			}
-			pos += step
 			moved = true
 		}
+		pos = c.at(c.next) - start
 		if err := s.handDuring(st); err != nil {
 			return err
+		}
+		if c.next < last && c.times == nil && s.dense(st) && !s.sliding() {
+			if err := s.stride(i, last); err != nil {
+				return err
+			}
+			pos = c.at(last) - start
+			moved = true
 		}
 	}
 	rest := st.Lasts - pos
@@ -377,6 +414,132 @@ func (s *Solver) playConstant(i int) error {
 	}
 	s.pass(st)
 	return nil
+}
+
+// stride goes from sample to sample up to the last by one propagator. When
+// nothing moves any more, the state stays: the map contracts, so no later step
+// moves it more than this one did.
+func (s *Solver) stride(i, last int) error {
+	c := &s.clock
+	p := s.propagator(i, c.step)
+	n := s.l.n
+	still := 0.01 * s.accuracy / float64(n*c.samples)
+	size := (1 + s.k) * n
+	x, y := s.x[:size], s.y[:size]
+	for j := range s.dx {
+		s.dx[j] = x[(1+j)*n : (2+j)*n]
+	}
+	resting := false
+	if n == 4 && s.k == 0 && last-c.next > 4*len(s.ring) {
+		if err := s.stride4(p, last); err != nil {
+			return err
+		}
+	}
+	for c.next <= last {
+		if !resting {
+			s.apply(p)
+			s.watch += p.worst
+			if c.next%8 == 0 {
+				resting = s.rests(x, y, still)
+			}
+		}
+		s.keep()
+		if err := s.emit(c.next, x[:n], s.dx); err != nil {
+			return err
+		}
+		c.next++
+	}
+	for j := range s.dx {
+		s.dx[j] = s.out[(1+j)*n : (2+j)*n]
+	}
+	return nil
+}
+
+// stride4 is stride for two levels. One step waits for the one before, so eight
+// states go side by side, each by eight steps at once.
+func (s *Solver) stride4(p *propagator, last int) error {
+	c := &s.clock
+	var two, four, eight full
+	a := &p.q
+	for i, b := range []*full{&two, &four, &eight} {
+		b.a = s.squares[i][:]
+		b.n, b.m = 4, 4
+		b.square(a)
+		b.conserve(s.l.pops, b.spareRows(s.exp.spare, s.l.pops))
+		a = b
+	}
+	for i := range s.ring {
+		s.apply(p)
+		copy(s.ring[i][:], s.x[:4])
+		if err := s.emit(c.next, s.ring[i][:], s.dx); err != nil {
+			return err
+		}
+		c.next++
+	}
+	worst := rounding(4, 3) + p.worst
+	q := &s.squares[2]
+	for c.next+len(s.ring) <= last {
+		for i := range s.ring {
+			x := &s.ring[i]
+			x0, x1, x2, x3 := x[0], x[1], x[2], x[3]
+			x[0] = x0 + ((q[0]*x0 + q[1]*x1) + (q[2]*x2 + q[3]*x3))
+			x[1] = x1 + ((q[4]*x0 + q[5]*x1) + (q[6]*x2 + q[7]*x3))
+			x[2] = x2 + ((q[8]*x0 + q[9]*x1) + (q[10]*x2 + q[11]*x3))
+			x[3] = x3 + ((q[12]*x0 + q[13]*x1) + (q[14]*x2 + q[15]*x3))
+		}
+		if s.watch += worst; s.watch > watchEvery {
+			for i := range s.ring {
+				s.guard(s.ring[i][:])
+			}
+		}
+		for i := range s.ring {
+			if err := s.emit(c.next, s.ring[i][:], s.dx); err != nil {
+				return err
+			}
+			c.next++
+		}
+		s.stats.Applied += len(s.ring)
+	}
+	copy(s.x, s.ring[len(s.ring)-1][:])
+	return nil
+}
+
+// rests tells whether the last move y of the state x was next to nothing.
+func (s *Solver) rests(x, y []float64, still float64) bool {
+	n := s.l.n
+	for q := 0; q <= s.k; q++ {
+		size := 1.0
+		if q > 0 {
+			size = largest(x[q*n : (q+1)*n])
+		}
+		if !(largest(y[q*n:(q+1)*n]) <= still*size) {
+			return false
+		}
+	}
+	return true
+}
+
+func largest(x []float64) float64 {
+	var most float64
+	for _, v := range x {
+		if v < 0 {
+			v = -v
+		}
+		if !(v <= most) {
+			most = v
+		}
+	}
+	return most
+}
+
+// sliding tells whether samples within the stretch move along a direction.
+func (s *Solver) sliding() bool {
+	for j := 0; j < s.k; j++ {
+		if s.clock.dtotal[j] != 0 || s.clock.dnow[j] != 0 {
+			return true
+		}
+	}
+	return false
 }
 
 // slides tells whether the duration depends on a direction.
@@ -430,12 +593,14 @@ func (s *Solver) playShaped(i int) error {
 					s.out[(1+j)*n+i] += s.y[i] * d
 				}
 			}
+			s.guard(s.out[:n])
 			if err := s.handOut(); err != nil {
 				return err
 			}
 		}
 		return nil
 	})
+	s.watch = math.Inf(1)
 	if err != nil {
 		return err
 	}
@@ -463,6 +628,7 @@ func (s *Solver) playShaped(i int) error {
 func (s *Solver) handDuring(st *Stretch) error {
 	c := &s.clock
 	n := s.l.n
+	s.keep()
 	copy(s.out, s.x)
 	slid := false
 	fraction := c.fraction(c.next)
@@ -485,6 +651,7 @@ func (s *Solver) handDuring(st *Stretch) error {
 
 // handRest hands out the state for all samples that are left.
 func (s *Solver) handRest() error {
+	s.keep()
 	for s.clock.next < s.clock.samples {
 		copy(s.out, s.x)
 		if err := s.handOut(); err != nil {
@@ -499,25 +666,11 @@ func (s *Solver) handOut() error {
 	return s.deliver(s.clock.next - 1)
 }
 
-func (s *Solver) hand(sample int, _ []float64, _ float64) error {
-	copy(s.out, s.x)
-	return s.deliver(sample)
-}
-
 // deliver checks the state in s.out and emits it.
 func (s *Solver) deliver(sample int) error {
 	n := s.l.n
-	x := s.out[:n]
 	if !allFinite(s.out[:(1+s.k)*n]) {
 		return errors.New("lindblad: the state is no longer finite: a coefficient is too large")
 	}
-	s.stats.TraceError = math.Max(s.stats.TraceError, math.Abs(s.l.trace(x)-s.trace))
-	if low, repaired := s.cone.keep(s.l, x); repaired {
-		s.stats.Projections++
-		s.stats.LowestFound = math.Min(s.stats.LowestFound, low)
-		if -low > s.accuracy {
-			s.warn(fmt.Sprintf("a state had the eigenvalue %.1g and was replaced by the nearest density matrix", low))
-		}
-	}
-	return s.emit(sample, x, s.dx)
+	return s.emit(sample, s.out[:n], s.dx)
 }
