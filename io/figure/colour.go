@@ -3,6 +3,7 @@ package figure
 import (
 	"image/color"
 	"math"
+	"sync"
 
 	"gonum.org/v1/plot/vg"
 )
@@ -47,32 +48,53 @@ func tint(c color.RGBA, share float64) color.RGBA {
 	return color.RGBA{mix(c.R), mix(c.G), mix(c.B), 0xff}
 }
 
-// The colours of a map run from dark blue over grey to light yellow, the one
-// direction of hue that all common kinds of colour vision tell apart, on a
-// straight line in the space OKLab (Ottosson 2020). That space is made so that
-// distances are seen differences: equal steps of the value look equal, and
-// lightness alone, as in a grey copy, carries the value too.
-var rampEnds = [2][3]float64{
-	{0.24, -0.005, -0.105},
-	{0.95, -0.020, 0.125},
+// The colours of a map run from dark blue over a dull green to light yellow,
+// ends that all common kinds of colour vision tell apart, in the space OKLab
+// (Ottosson 2020). That space is made so that distances are seen differences.
+// Lightness rises evenly, so that a grey copy carries the value too, and the
+// path bends so little that equal steps of the value look equal.
+var (
+	rampFrom = [3]float64{0.24, -0.005, -0.105}
+	rampTo   = [3]float64{0.95, -0.030, 0.130}
+)
+
+const rampBend = -0.06 // towards green, half way
+
+// rampLab returns the colour for a value from 0 to 1 as L, a, b.
+func rampLab(v float64) (lab [3]float64) {
+	for i := range lab {
+		lab[i] = rampFrom[i] + v*(rampTo[i]-rampFrom[i])
+	}
+	lab[1] += 4 * v * (1 - v) * rampBend
+	return lab
 }
+
+// ramp holds the colours of a map, more of them than 8 bits can tell apart.
+var ramp = sync.OnceValue(func() *[1024]color.RGBA {
+	var colours [1024]color.RGBA
+	for i := range colours {
+		linear := linearOf(rampLab(float64(i) / float64(len(colours)-1)))
+		colours[i] = color.RGBA{encoded(linear[0]), encoded(linear[1]), encoded(linear[2]), 0xff}
+	}
+	return &colours
+})
 
 // rampColour returns the colour for a value from 0 to 1.
 func rampColour(v float64) color.RGBA {
-	v = min(max(v, 0), 1)
-	var lab [3]float64
-	for i := range lab {
-		lab[i] = rampEnds[0][i] + v*(rampEnds[1][i]-rampEnds[0][i])
-	}
+	colours := ramp()
+	return colours[int(math.Round(min(max(v, 0), 1)*float64(len(colours)-1)))]
+}
+
+// linearOf returns the linear red, green and blue of a colour in OKLab.
+func linearOf(lab [3]float64) [3]float64 {
 	cube := func(x float64) float64 { return x * x * x }
 	l := cube(lab[0] + 0.3963377774*lab[1] + 0.2158037573*lab[2])
 	m := cube(lab[0] - 0.1055613458*lab[1] - 0.0638541728*lab[2])
 	s := cube(lab[0] - 0.0894841775*lab[1] - 1.2914855480*lab[2])
-	return color.RGBA{
-		encoded(4.0767416621*l - 3.3077115913*m + 0.2309699292*s),
-		encoded(-1.2684380046*l + 2.6097574011*m - 0.3413193965*s),
-		encoded(-0.0041960863*l - 0.7034186147*m + 1.7076147010*s),
-		0xff,
+	return [3]float64{
+		4.0767416621*l - 3.3077115913*m + 0.2309699292*s,
+		-1.2684380046*l + 2.6097574011*m - 0.3413193965*s,
+		-0.0041960863*l - 0.7034186147*m + 1.7076147010*s,
 	}
 }
 

@@ -78,9 +78,9 @@ func (pl *plane) pieces(x, y []float64) [][]vg.Point {
 }
 
 // thinned leaves out what no eye can see: of many points within the width of a
-// dot of the printer it keeps the first, the lowest, the highest and the last.
+// dot it keeps the first, the lowest, the highest and the last.
 func thinned(points []vg.Point) []vg.Point {
-	const few, dot = 4000, 0.12
+	const few, dot = 4000, 0.24
 	if len(points) <= few {
 		return points
 	}

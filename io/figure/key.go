@@ -16,7 +16,16 @@ type entry struct {
 	at     vg.Point
 }
 
+// sample returns the width of the sample in front of the label.
+func (e *entry) sample() vg.Length {
+	if e.line < 0 {
+		return markerWidth
+	}
+	return sampleWidth
+}
+
 const (
+	markerWidth = 10
 	sampleWidth = 26
 	sampleGap   = 5
 	entryGap    = 16
@@ -32,7 +41,11 @@ func (p *Panel) entries() key {
 	}
 	for i, q := range p.Points {
 		if q.Label != "" {
-			k.entries = append(k.entries, entry{label: q.Label, line: -1, points: i})
+			e := entry{label: q.Label, line: -1, points: i}
+			if len(p.Points) > 1 && i < len(p.Lines) && p.Lines[i].Label == "" {
+				e.line = i // their curve has their colour
+			}
+			k.entries = append(k.entries, e)
 		}
 	}
 	if len(k.entries) < 2 {
@@ -50,7 +63,7 @@ func (k *key) arrange(room vg.Length) {
 	for i := range k.entries {
 		e := &k.entries[i]
 		e.label = cut(face, e.label, room-sampleWidth-sampleGap)
-		size := sampleWidth + sampleGap + width(face, e.label)
+		size := e.sample() + sampleGap + width(face, e.label)
 		if i > 0 && x+size > room {
 			x, y = 0, y-lineHeight
 		}
@@ -70,23 +83,26 @@ func (k *key) height() vg.Length {
 func (pl *plane) drawKey(p *pen) {
 	face := letters(keySize)
 	start := vg.Point{X: pl.frame.Min.X, Y: pl.frame.Max.Y + pl.key.height() - lineHeight + 2}
-	for _, e := range pl.key.entries {
+	for i := range pl.key.entries {
+		e := &pl.key.entries[i]
 		at := start.Add(e.at)
-		centre := at.Add(vg.Point{X: sampleWidth / 2, Y: middle * keySize})
-		from, to := centre.Sub(vg.Point{X: sampleWidth / 2}), centre.Add(vg.Point{X: sampleWidth / 2})
+		half := vg.Point{X: e.sample() / 2}
+		centre := at.Add(half).Add(vg.Point{Y: middle * keySize})
+		from, to := centre.Sub(half), centre.Add(half)
 		if e.line >= 0 {
 			if len(pl.Lines[e.line].Low) > 0 {
-				half := vg.Point{Y: 4}
-				p.area(bandColour(e.line), from.Sub(half), to.Sub(half), to.Add(half), from.Add(half))
+				up := vg.Point{Y: 4}
+				p.area(bandColour(e.line), from.Sub(up), to.Sub(up), to.Add(up), from.Add(up))
 			}
 			p.line(curve(e.line), from, to)
-		} else {
+		}
+		if e.points >= 0 {
 			colour, shape := pl.pointStyle(e.points)
 			if len(pl.Points[e.points].Error) > 0 {
 				p.line(stroke{colour: colour, width: errorWidth}, centre.Sub(vg.Point{Y: 5}), centre.Add(vg.Point{Y: 5}))
 			}
 			p.marker(shape, colour, centre, 2.5)
 		}
-		p.text(face, at.Add(vg.Point{X: sampleWidth + sampleGap}), e.label, 0)
+		p.text(face, at.Add(vg.Point{X: e.sample() + sampleGap}), e.label, 0)
 	}
 }

@@ -17,7 +17,7 @@ const (
 	panelGap    = 10 // between panels
 	barGap      = 12 // between the frame and the colour bar
 	barWidth    = 11
-	leastHeight = 40 // of a frame
+	leastHeight = 30 // of a frame
 	leastWidth  = 60
 )
 

@@ -57,7 +57,7 @@ func (f *Figure) Write(w io.Writer, format string) error {
 	case "png":
 		data = withResolution(data)
 	case "svg":
-		data = repaired(data)
+		data = repaired(data, p.widths)
 	}
 	if _, err := w.Write(data); err != nil {
 		return fmt.Errorf("figure: writing the %s: %w", format, err)
@@ -87,13 +87,22 @@ func (p *Panel) share() float64 {
 	return p.Share
 }
 
-// repaired corrects what the library writes into an SVG: maps are PNG images
-// but are declared as something that some viewers refuse, and letters have no
-// substitute where the font is not installed.
-func repaired(svg []byte) []byte {
+// repaired corrects what the library writes into an SVG. Maps are PNG images
+// but are declared as something that some viewers refuse. Letters have no
+// substitute where the font is not installed; with one, each text keeps the
+// width that it was laid out with.
+func repaired(svg []byte, widths []vg.Length) []byte {
 	svg = bytes.ReplaceAll(svg, []byte("data:image/jpg;base64,"), []byte("data:image/png;base64,"))
-	return bytes.ReplaceAll(svg, []byte("font-family:Liberation Sans;"),
+	svg = bytes.ReplaceAll(svg, []byte("font-family:Liberation Sans;"),
 		[]byte("font-family:Liberation Sans,Arial,Helvetica,sans-serif;"))
+	var out bytes.Buffer
+	for i, part := range bytes.Split(svg, []byte("<text ")) {
+		if i > 0 {
+			fmt.Fprintf(&out, `<text textLength="%.5g" lengthAdjust="spacingAndGlyphs" `, widths[i-1].Points())
+		}
+		out.Write(part)
+	}
+	return out.Bytes()
 }
 
 // withResolution adds the chunk pHYs (W3C PNG specification, 11.3.5.3) behind

@@ -12,8 +12,9 @@ import (
 // A pen draws on the canvas of a format and hides what the formats do differently.
 type pen struct {
 	vg.Canvas
-	outlines bool // draw letters as shapes: PDF's letters lack µ and Greek
-	upside   bool // draw images upside down: the library's PDF turns them
+	outlines bool        // draw letters as shapes: PDF's letters lack µ and Greek
+	upside   bool        // draw images upside down: the library's PDF turns them
+	widths   []vg.Length // of the texts set as letters, in order
 }
 
 type stroke struct {
@@ -22,19 +23,28 @@ type stroke struct {
 	dashes []vg.Length
 }
 
+// line draws in stretches: the library's rasteriser takes a time that grows with
+// the square of what one path covers. A stretch begins one segment back, so that
+// the corner is drawn, with its dashes where they would have been.
 func (p *pen) line(s stroke, points ...vg.Point) {
-	if len(points) < 2 {
-		return
-	}
+	const stretch = 300
 	p.SetColor(s.colour)
 	p.SetLineWidth(s.width)
-	p.SetLineDash(s.dashes, 0)
-	var path vg.Path
-	path.Move(points[0])
-	for _, q := range points[1:] {
-		path.Line(q)
+	var length vg.Length // up to the stretch
+	for from := 0; from+1 < len(points); from += stretch {
+		to := min(from+stretch+2, len(points))
+		p.SetLineDash(s.dashes, length)
+		var path vg.Path
+		path.Move(points[from])
+		for i := from + 1; i < to; i++ {
+			path.Line(points[i])
+			if i <= from+stretch {
+				step := points[i].Sub(points[i-1])
+				length += vg.Length(math.Hypot(float64(step.X), float64(step.Y)))
+			}
+		}
+		p.Stroke(path)
 	}
-	p.Stroke(path)
 }
 
 func (p *pen) area(c color.RGBA, points ...vg.Point) {
@@ -69,6 +79,7 @@ func (p *pen) text(face font.Face, at vg.Point, text string, align float64) {
 			p.Pop()
 		} else {
 			p.FillString(r.face, place, r.text)
+			p.widths = append(p.widths, r.face.Width(r.text))
 		}
 		at.X += r.face.Width(r.text)
 	}

@@ -33,7 +33,7 @@ func scaleFor(unit string, low, high float64, log bool) scale {
 	case log && high/low > 1e4:
 		return s // numbers are powers of ten
 	case log:
-		largest = math.Sqrt(low) * math.Sqrt(high)
+		largest = math.Pow(low, 0.25) * math.Pow(high, 0.75) // numbers from 0.001 to 10000
 	case largest > 1e4*(high-low):
 		// Five and more digits would be the same along the whole axis: count
 		// from a round value inside instead.

@@ -33,11 +33,12 @@ func viewOf(a Axis, s span, room float64) view {
 		s = span{0, 0}
 	}
 	if a.Log {
-		if s.high/s.low < 1+1e-12 {
-			s = span{s.low / 3, s.high * 3}
+		low, high := math.Log(s.low), math.Log(s.high)
+		if high-low < 1e-12 {
+			low, high = low-1, high+1
 		}
-		factor := math.Pow(s.high/s.low, room)
-		s = span{max(s.low/factor, smallest), s.high * factor}
+		more := room * (high - low)
+		s = span{math.Exp(max(low-more, math.Log(smallest))), math.Exp(min(high+more, math.Log(largest)))}
 	} else {
 		if size := max(math.Abs(s.low), math.Abs(s.high)); s.high-s.low <= 1e-12*size {
 			half := 0.1 * size
