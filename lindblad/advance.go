@@ -24,10 +24,9 @@ func (s *Solver) advance(i int, duration float64) error {
 		c.Ideal = false
 		c.Lasts = duration
 		accuracy := 0.1 * s.accuracy
-		s.taylor.prepare(s.l, &c, s.k, orderFor(accuracy))
-		f := field{&c, s.theta, s.dtheta}
 		s.watch += accuracy
-		return s.taylor.integrate(s.ctx, &f, s.x, duration, accuracy, &s.stats, func(float64, float64) error { return nil })
+		f := field{&c, s.theta, s.dtheta}
+		return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, duration, accuracy, &s.stats, func(float64, float64, *polynomial) error { return nil })
 	}
 	p := s.propagator(i, duration)
 	s.apply(p)

@@ -45,7 +45,7 @@ type Solver struct {
 	ring    [8][4]float64
 	squares [3][16]float64
 	exp     exponential
-	taylor  taylor
+	shaped  shaped
 	cone    cone
 	theta   []float64
 	dtheta  [][]float64
@@ -573,23 +573,28 @@ func (s *Solver) playShaped(i int) error {
 	st := &s.stretches[i]
 	c := &s.clock
 	n := s.l.n
-	w := &s.taylor
-	w.prepare(s.l, st, s.k, orderFor(s.perTime*st.Lasts))
 	f := field{st, s.theta, s.dtheta}
 	start := c.now
-	err := w.integrate(s.ctx, &f, s.x, st.Lasts, s.perTime*st.Lasts, &s.stats, func(from, step float64) error {
+	err := s.shaped.run(s.ctx, s.l, &f, s.x, s.k, st.Lasts, s.perTime*st.Lasts, &s.stats, func(from, step float64, p *polynomial) error {
 		end := start + from + step
 		if from+step >= st.Lasts {
 			end = start + st.Lasts
 		}
 		for c.due(end) {
 			tau := math.Max(c.at(c.next)-start-from, 0)
-			w.at(s.out, tau)
-			w.slopeAt(s.y, tau)
-			fraction := c.fraction(c.next)
+			p.at(s.out, tau)
+			s.l.setTrace(s.out[:n], s.trace)
+			fraction, slid := c.fraction(c.next), false
 			for j := 0; j < s.k; j++ {
 				d := fraction*c.dtotal[j] - c.dnow[j]
-				for i := 0; d != 0 && i < n; i++ {
+				if d == 0 {
+					continue
+				}
+				if !slid {
+					p.slopeAt(s.y, tau)
+					slid = true
+				}
+				for i := 0; i < n; i++ {
 					s.out[(1+j)*n+i] += s.y[i] * d
 				}
 			}
@@ -605,9 +610,9 @@ func (s *Solver) playShaped(i int) error {
 		return err
 	}
 	if s.slides(st) {
+		w := &s.shaped.taylor
 		w.coefficients(&f, st.Lasts, 0)
-		copy(s.needVals(), w.vals)
-		s.l.times(s.y[:n], s.vals, s.x[:n])
+		s.l.times(s.y[:n], w.vals, s.x[:n])
 		for i := range w.driven {
 			w.driven[i].add(s.y[:n], s.x[:n], w.driven[i].f[0])
 		}

@@ -1,10 +1,6 @@
 package lindblad
 
-import (
-	"context"
-	"fmt"
-	"math"
-)
+import "math"
 
 // Taylor's method in time. Within a step, x(t+τ) = Σ c_p τ^p with
 //
@@ -24,34 +20,43 @@ const maxOrder = 30
 // driven is one piece that depends on time: its rows on the pattern and its
 // series.
 type driven struct {
-	piece int
-	rows  []int32 // row numbers
-	start []int32 // entries of each
-	col   []int32
-	val   []float64
-	f     []float64   // series of the coefficient
-	df    [][]float64 // and of its slopes
-	w     []float64   // L_m c_p for all p, parts and rows
+	piece  int
+	rows   []int32 // row numbers
+	start  []int32 // entries of each
+	col    []int32
+	val    []float64
+	f      []float64   // series of the coefficient
+	df     [][]float64 // and of its slopes
+	sloped []bool      // whether there are any
+	w      []float64   // L_m c_p for all parts, rows and p
 }
 
 type taylor struct {
 	l      *Layout
-	k      int // directions
-	order  int
+	k      int         // directions
 	vals   []float64   // L₀ on the pattern
 	dvals  [][]float64 // slopes, nil: zero
 	driven []driven
-	c      []float64 // coefficients: order+1 blocks of (1+k)·n
-	next   []float64
+	poly   polynomial // the series at the start of the step
+	next   []float64  // the state at its end
 	slope  []float64
+	spare  []float64
 	series [4][maxOrder + 1]float64
-	bounds []float64 // entries of the abs row sums, for a first step
 }
 
-// orderFor returns the order that takes the fewest products per unit of time.
-func orderFor(accuracy float64) int {
-	p := int(3 + 0.55*math.Log(1/accuracy))
-	return min(max(p, 8), maxOrder-1)
+// bestOrder returns the order that makes the most progress per multiplication
+// when a step may err by tolerance: order K reaches h with (h‖L‖)^{K+1}/(K+1)!
+// of that size.
+func (w *taylor) bestOrder(tolerance float64) int {
+	best, most := 0, 0.0
+	for k := 6; k < maxOrder; k++ {
+		log, _ := math.Lgamma(float64(k + 2))
+		h := math.Exp((math.Log(tolerance) + log) / float64(k+1))
+		if v := math.Min(h, 0.7*float64(k)) / w.cost(k); v > most {
+			best, most = k, v
+		}
+	}
+	return best
 }
 
 // field evaluates series of the terms of a stretch.
@@ -72,12 +77,7 @@ func (w *taylor) coefficients(f *field, t float64, order int) {
 	}
 	for m := range f.stretch.Terms {
 		term := &f.stretch.Terms[m]
-		var d *driven
-		for i := range w.driven {
-			if w.driven[i].piece == term.Piece {
-				d = &w.driven[i]
-			}
-		}
+		d := w.drivenBy(term.Piece)
 		e, co, si := w.series[0][:order+1], w.series[1][:order+1], w.series[2][:order+1]
 		if term.Envelope == nil {
 			clear(e)
@@ -85,13 +85,16 @@ func (w *taylor) coefficients(f *field, t float64, order int) {
 		} else {
 			term.Envelope.Taylor(t, e)
 		}
-		omega := w.rotation(f, term, t, co, si)
+		w.rotation(f, term, t, co, si)
 		multiplyAdd(d.f, e, co, term.Amplitude)
 		for j := range f.stretch.Slopes {
 			s := &f.stretch.Slopes[j]
 			var ts TermSlope
 			if s.Terms != nil {
 				ts = s.Terms[m]
+			}
+			if !d.sloped[j] {
+				continue
 			}
 			df := d.df[j]
 			if ts.Amplitude != 0 {
@@ -122,12 +125,11 @@ func (w *taylor) coefficients(f *field, t float64, order int) {
 				multiplyAdd(df, de, si, -term.Amplitude)
 			}
 		}
-		_ = omega
 	}
 }
 
 // rotation gives the series of cos and sin of θ(t) + phase.
-func (w *taylor) rotation(f *field, term *Term, t float64, co, si []float64) float64 {
+func (w *taylor) rotation(f *field, term *Term, t float64, co, si []float64) {
 	theta, omega := term.Phase, 0.0
 	if term.Rotor >= 0 {
 		theta += f.theta[term.Rotor]
@@ -151,7 +153,6 @@ func (w *taylor) rotation(f *field, term *Term, t float64, co, si []float64) flo
 		}
 		power *= omega / float64(p+1)
 	}
-	return omega
 }
 
 // turn returns ωt less a whole number of turns, without losing the digits of
@@ -176,8 +177,8 @@ func multiplyAdd(c, a, b []float64, v float64) {
 }
 
 // prepare lays out the driven pieces of a stretch.
-func (w *taylor) prepare(l *Layout, s *Stretch, k, order int) {
-	w.l, w.k, w.order = l, k, order
+func (w *taylor) prepare(l *Layout, s *Stretch, k int) {
+	w.l, w.k = l, k
 	w.vals = sized(w.vals, len(l.col))
 	l.generator(w.vals, s.Coef)
 	w.dvals = sized(w.dvals, k)
@@ -211,10 +212,37 @@ func (w *taylor) prepare(l *Layout, s *Stretch, k, order int) {
 			d.df[j] = zeroed(d.df[j], maxOrder+1)
 		}
 		d.lay(l, t.Piece)
-		d.w = sized(d.w, (order+1)*(1+k)*len(d.rows))
+		d.w = sized(d.w, (1+k)*len(d.rows)*(maxOrder+1))
+		d.sloped = zeroed(d.sloped, k)
 	}
-	w.c = sized(w.c, (order+2)*(1+k)*l.n)
-	w.next, w.slope = sized(w.next, (1+k)*l.n), sized(w.slope, (1+k)*l.n)
+	w.poly.reset((1+k)*l.n, maxOrder)
+	w.next, w.slope, w.spare = sized(w.next, (1+k)*l.n), sized(w.slope, (1+k)*l.n), sized(w.spare, l.n)
+	for j := range s.Slopes {
+		for m, t := range s.Terms {
+			if s.slopeMatters(j, m) {
+				w.drivenBy(t.Piece).sloped[j] = true
+			}
+		}
+	}
+}
+
+func (w *taylor) drivenBy(piece int) *driven {
+	for i := range w.driven {
+		if w.driven[i].piece == piece {
+			return &w.driven[i]
+		}
+	}
+	panic("lindblad: a term without its piece")
+}
+
+// slopeMatters tells whether term m may depend on direction j. The phase of a
+// rotor may always have moved.
+func (s *Stretch) slopeMatters(j, m int) bool {
+	if s.Terms[m].Rotor >= 0 {
+		return true
+	}
+	d := s.Slopes[j].Terms
+	return d != nil && (d[m].Amplitude != 0 || d[m].Phase != 0 || d[m].Envelope != nil)
 }
 
 func anyNonZero(x []float64) bool {
@@ -244,183 +272,97 @@ func (d *driven) lay(l *Layout, piece int) {
 	}
 }
 
-// expand computes the coefficients c_1 … c_order from c_0.
-func (w *taylor) expand(stretch *Stretch) {
+// expand computes the coefficients c_1 … c_order of p from its c_0, for the
+// series that coefficients has left.
+func (w *taylor) expand(p *polynomial, order int) {
 	n := w.l.n
-	block := (1 + w.k) * n
-	for p := 0; p < w.order; p++ {
-		now, next := w.c[p*block:(p+1)*block], w.c[(p+1)*block:(p+2)*block]
+	block := p.block
+	p.order, p.scale = order, 1
+	for i := 0; i < order; i++ {
+		now, next := p.c[i*block:(i+1)*block], p.c[(i+1)*block:(i+2)*block]
 		for q := 0; q <= w.k; q++ {
 			y := next[q*n : (q+1)*n]
 			w.l.times(y, w.vals, now[q*n:(q+1)*n])
 			if q > 0 && len(w.dvals[q-1]) > 0 {
 				w.l.addTimes(y, w.dvals[q-1], now[:n])
 			}
-			for i := range w.driven {
-				w.driven[i].convolve(y, now, p, q, w.k, n, q > 0 && q <= len(stretch.Slopes))
+			for j := range w.driven {
+				w.driven[j].convolve(y, now, i, q, w.k, n)
 			}
 		}
-		f := 1 / float64(p+1)
-		for i := range next {
-			next[i] *= f
+		f := 1 / float64(i+1)
+		for j := range next {
+			next[j] *= f
 		}
 	}
 }
 
-func (d *driven) convolve(y, now []float64, p, q, k, n int, sloped bool) {
+// convolve adds Σ_i f_i L_m c_{p−i} to y, part q; the products L_m c_p are kept
+// newest last, so that both factors run forwards.
+func (d *driven) convolve(y, now []float64, p, q, k, n int) {
 	m := len(d.rows)
-	stride := (1 + k) * m
-	w := d.w[p*stride+q*m:]
+	const long = maxOrder + 1
+	w := d.w[q*m*long : (q+1)*m*long]
 	x := now[q*n : (q+1)*n]
+	f := d.f[:p+1]
 	for r := 0; r < m; r++ {
 		var s float64
-		for e := d.start[r]; e < d.start[r+1]; e++ {
-			s += d.val[e] * x[d.col[e]]
+		from, to := d.start[r], d.start[r+1]
+		col := d.col[from:to]
+		for e, v := range d.val[from:to] {
+			s += v * x[col[e]]
 		}
-		w[r] = s
+		at := r*long + maxOrder - p
+		w[at] = s
+		y[d.rows[r]] += dot(f, w[at:at+p+1])
 	}
-	for i := 0; i <= p; i++ {
-		if f := d.f[i]; f != 0 {
-			w := d.w[(p-i)*stride+q*m : (p-i)*stride+q*m+m]
-			for r, v := range w {
-				y[d.rows[r]] += f * v
-			}
-		}
-		if sloped {
-			if f := d.df[q-1][i]; f != 0 {
-				w := d.w[(p-i)*stride : (p-i)*stride+m]
-				for r, v := range w {
-					y[d.rows[r]] += f * v
-				}
-			}
+	if q > 0 && d.sloped[q-1] {
+		w, f := d.w[:m*long], d.df[q-1][:p+1]
+		for r := 0; r < m; r++ {
+			at := r*long + maxOrder - p
+			y[d.rows[r]] += dot(f, w[at:at+p+1])
 		}
 	}
 }
 
-// largest returns the largest absolute value of part q of coefficient p.
-func (w *taylor) largest(p, q int) float64 {
-	n := w.l.n
-	var most float64
-	for _, v := range w.c[(p*(1+w.k)+q)*n : (p*(1+w.k)+q)*n+n] {
-		if v = math.Abs(v); !(v <= most) {
-			most = v
-		}
+func dot(a, b []float64) float64 {
+	b = b[:len(a)]
+	var s, u float64
+	i := 0
+	for ; i+1 < len(a); i += 2 {
+		s += a[i] * b[i]
+		u += a[i+1] * b[i+1]
 	}
-	return most
+	if i < len(a) {
+		s += a[i] * b[i]
+	}
+	return s + u
 }
 
-// at evaluates the polynomial at τ into y.
-func (w *taylor) at(y []float64, tau float64) {
-	block := (1 + w.k) * w.l.n
-	copy(y[:block], w.c[w.order*block:(w.order+1)*block])
-	for p := w.order - 1; p >= 0; p-- {
-		c := w.c[p*block : (p+1)*block]
-		for i, v := range c {
-			y[i] = y[i]*tau + v
-		}
-	}
-}
-
-// slopeAt evaluates the derivative of the polynomial.
-func (w *taylor) slopeAt(y []float64, tau float64) {
-	block := (1 + w.k) * w.l.n
-	for i, v := range w.c[w.order*block : (w.order+1)*block] {
-		y[i] = v * float64(w.order)
-	}
-	for p := w.order - 1; p >= 1; p-- {
-		c := w.c[p*block : (p+1)*block]
-		f := float64(p)
-		for i, v := range c {
-			y[i] = y[i]*tau + f*v
-		}
-	}
-}
-
-// integrate carries x (1 + k parts) through the stretch. visit is called for
-// each step with the step's start and length before x moves on; it may
-// evaluate at and slopeAt in between.
-func (w *taylor) integrate(ctx context.Context, f *field, x []float64, lasts, accuracy float64, stats *Stats, visit func(from, step float64) error) error {
-	l := w.l
-	n := l.n
-	block := (1 + w.k) * n
-	perTime := accuracy / lasts
-	t := 0.0
-	trace := make([]float64, 1+w.k)
-	for q := range trace {
-		trace[q] = l.trace(x[q*n:])
-	}
-	limit := math.Inf(1)
-	copy(w.c, x[:block])
-	for count := 0; t < lasts; count++ {
-		if count%64 == 0 && ctx.Err() != nil {
-			return ctx.Err()
-		}
-		w.coefficients(f, t, w.order)
-		w.expand(f.stretch)
-		stats.Steps++
-		stats.Products += w.order
-		rest := math.Min(lasts, f.breakAfter(t, lasts)) - t
-		h := math.Min(math.Min(w.step(perTime), limit), rest)
-		for {
-			if !(h > 1e-15*lasts) {
-				return fmt.Errorf("lindblad: the step became too small at time %g of a stretch of %g: an envelope is not smooth there or a value is not finite", t, lasts)
-			}
-			w.at(w.next, h)
-			w.slopeAt(w.slope, h)
-			if w.defect(f, t+h) <= perTime*float64(w.order) {
-				break
-			}
-			stats.Rejected++
-			h *= 0.7
-		}
-		limit = 3 * h
-		if err := visit(t, h); err != nil {
-			return err
-		}
-		copy(w.c[:block], w.next)
-		if h == rest {
-			t = math.Min(lasts, f.breakAfter(t, lasts))
-		} else {
-			t += h
-		}
-		for q := range trace {
-			l.setTrace(w.c[q*n:(q+1)*n], trace[q])
-		}
-	}
-	copy(x, w.c[:block])
-	return nil
-}
-
-// breakAfter returns the first break of an envelope after t, at most end.
-func (f *field) breakAfter(t, end float64) float64 {
-	for i := range f.stretch.Terms {
-		if b, ok := f.stretch.Terms[i].Envelope.(Broken); ok {
-			if u := b.NextBreak(t); u > t && u < end {
-				end = u
-			}
-		}
-	}
-	return end
-}
-
-// step proposes a step from the last coefficients, for an error per time.
+// step proposes a step from the last coefficients: the first one left out is
+// taken to continue the ratio of the last ones.
 func (w *taylor) step(perTime float64) float64 {
 	h := math.Inf(1)
+	k := w.poly.order
+	n := w.l.n
 	for q := 0; q <= w.k; q++ {
+		a, b, c := largest(w.poly.part(k-2, q, n)), largest(w.poly.part(k-1, q, n)), largest(w.poly.part(k, q, n))
+		if c != c {
+			return 0
+		}
+		ratio := math.Max(c/math.Max(b, 1e-300), math.Max(b/math.Max(a, 1e-300), math.Sqrt(c/math.Max(a, 1e-300))))
+		if a == 0 && b == 0 && c == 0 {
+			continue
+		}
+		last := math.Max(c, b*ratio/2)
 		scale := 1.0
 		if q > 0 {
-			scale = math.Max(w.largest(0, q), 1e-300)
+			scale = math.Max(largest(w.poly.part(0, q, n)), 1e-300)
 			if !math.IsInf(h, 1) {
-				scale = math.Max(scale, h*w.largest(1, q))
+				scale = math.Max(scale, h*largest(w.poly.part(1, q, n)))
 			}
 		}
-		for p := w.order - 1; p <= w.order; p++ {
-			if c := w.largest(p, q); c > 0 {
-				h = math.Min(h, math.Pow(perTime*scale/c, 1/float64(p-1)))
-			} else if c != c {
-				return 0
-			}
-		}
+		h = math.Min(h, math.Min(0.9*math.Pow(perTime*scale/(last*ratio), 1/float64(k)), 0.7/ratio))
 	}
 	return h
 }
@@ -434,14 +376,14 @@ func (w *taylor) defect(f *field, t float64) float64 {
 	for q := 0; q <= w.k; q++ {
 		x, s := w.next[q*n:(q+1)*n], w.slope[q*n:(q+1)*n]
 		var size, worst float64
-		y := w.c[(w.order+1)*(1+w.k)*n:][:n]
+		y := w.spare
 		w.l.times(y, w.vals, x)
 		if q > 0 && len(w.dvals[q-1]) > 0 {
 			w.l.addTimes(y, w.dvals[q-1], w.next[:n])
 		}
 		for i := range w.driven {
 			w.driven[i].add(y, x, w.driven[i].f[0])
-			if q > 0 && q <= len(f.stretch.Slopes) {
+			if q > 0 && w.driven[i].sloped[q-1] {
 				w.driven[i].add(y, w.next[:n], w.driven[i].df[q-1][0])
 			}
 		}
