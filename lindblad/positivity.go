@@ -14,6 +14,7 @@ type cone struct {
 	layout *Layout
 	made   uint64
 	blocks [][]int
+	places [][]int // of each block: populations, then real and imaginary parts
 	rho    []complex128
 	vec    []complex128
 	val    []float64
@@ -61,6 +62,20 @@ func (w *cone) reset(l *Layout) {
 		b := &w.blocks[at[root(i)]]
 		*b = append(*b, i)
 	}
+	w.places = w.places[:0]
+	for _, b := range w.blocks {
+		var at []int
+		for _, i := range b {
+			at = append(at, l.index[i])
+		}
+		for i, u := range b {
+			for _, v := range b[i+1:] {
+				k := pairAt(n, u, v)
+				at = append(at, l.index[k], l.index[k+1])
+			}
+		}
+		w.places = append(w.places, at)
+	}
 	most := 0
 	for _, b := range w.blocks {
 		most = max(most, len(b))
@@ -72,7 +87,7 @@ func (w *cone) reset(l *Layout) {
 // that it had.
 func (w *cone) keep(l *Layout, x []float64) (low float64, repaired bool) {
 	w.reset(l)
-	for _, b := range w.blocks {
+	for b := range w.blocks {
 		if !w.positive(l, x, b) {
 			return w.repair(l, x), true
 		}
@@ -89,9 +104,37 @@ func (w *cone) load(l *Layout, x []float64, block []int) {
 	}
 }
 
-func (w *cone) positive(l *Layout, x []float64, block []int) bool {
-	if len(block) == 1 {
-		return l.Population(x, block[0]) > -shift
+// positive tells whether the block of ρ + 1e-13 has positive pivots.
+func (w *cone) positive(l *Layout, x []float64, number int) bool {
+	block := w.blocks[number]
+	at := w.places[number]
+	switch len(block) {
+	case 1:
+		return x[at[0]] > -shift
+	case 2:
+		d0, d1 := x[at[0]]+shift, x[at[1]]+shift
+		re, im := value(x, at[2]), value(x, at[3])
+		return d0 > 0 && d1-(re*re+im*im)/(2*d0) > 0
+	case 3:
+		// coordinates are √2 times the elements
+		d0, d1, d2 := x[at[0]]+shift, x[at[1]]+shift, x[at[2]]+shift
+		a, b := value(x, at[3]), value(x, at[4]) // 01
+		c, d := value(x, at[5]), value(x, at[6]) // 02
+		e, f := value(x, at[7]), value(x, at[8]) // 12
+		if !(d0 > 0) {
+			return false
+		}
+		g := 0.5 / d0
+		d1 -= (a*a + b*b) * g
+		d2 -= (c*c + d*d) * g
+		if !(d1 > 0) {
+			return false
+		}
+		// ρ_12 − ρ_10 ρ_02/d0, with ρ_10 the conjugate of ρ_01
+		g *= math.Sqrt2
+		e -= (a*c + b*d) * g
+		f -= (a*d - b*c) * g
+		return d2-(e*e+f*f)/(2*d1) > 0
 	}
 	w.load(l, x, block)
 	m := len(block)
@@ -104,7 +147,8 @@ func (w *cone) positive(l *Layout, x []float64, block []int) bool {
 				u := r[j*m+k]
 				v -= r[i*m+k] * complex(real(u), -imag(u))
 			}
-			v /= complex(real(r[j*m+j]), 0)
+			f := 1 / real(r[j*m+j])
+			v = complex(real(v)*f, imag(v)*f)
 			r[i*m+j] = v
 			d -= real(v)*real(v) + imag(v)*imag(v)
 		}
@@ -114,6 +158,14 @@ func (w *cone) positive(l *Layout, x []float64, block []int) bool {
 		r[i*m+i] = complex(math.Sqrt(d), 0)
 	}
 	return true
+}
+
+// value is coordinate i of x; −1 is one that cannot be reached.
+func value(x []float64, i int) float64 {
+	if i < 0 {
+		return 0
+	}
+	return x[i]
 }
 
 // repair projects x and returns its lowest eigenvalue.
@@ -169,7 +221,7 @@ func (w *cone) repair(l *Layout, x []float64) float64 {
 	for i, g := range l.global {
 		x[i] = coordinate(rho, n, int(g))
 	}
-	for _, b := range w.blocks {
+	for b := range w.blocks {
 		if !w.positive(l, x, b) {
 			copy(x, before)
 			w.mix(l, x, low, reachable)

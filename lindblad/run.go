@@ -46,6 +46,7 @@ type Solver struct {
 	squares [3][16]float64
 	exp     exponential
 	shaped  shaped
+	pe      periodic
 	cone    cone
 	theta   []float64
 	dtheta  [][]float64
@@ -222,7 +223,7 @@ func (s *Solver) startClock(order []Node) {
 	shaped := s.total(order, 1, &c.total, c.dtotal)
 	s.perTime = 0
 	if shaped > 0 {
-		s.perTime = 0.2 * s.accuracy / shaped
+		s.perTime = 0.5 * s.accuracy / shaped
 	}
 	c.set()
 }
@@ -570,6 +571,9 @@ func (s *Solver) slideEnd(st *Stretch) {
 
 // playShaped integrates in time.
 func (s *Solver) playShaped(i int) error {
+	if done, err := s.playPeriodic(i); done {
+		return err
+	}
 	st := &s.stretches[i]
 	c := &s.clock
 	n := s.l.n

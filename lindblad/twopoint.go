@@ -19,6 +19,7 @@ type twoPoint struct {
 	w        *taylor
 	m        int
 	weights  [2][]float64 // for m and m+1
+	lower    []float64    // the binomials C(q, p)
 	upper    []float64    // inverse of the binomials C(m+1+r, p)
 	step     float64      // proposal for the next one
 	ahead    polynomial   // series at the end of the step
@@ -28,14 +29,15 @@ type twoPoint struct {
 	lu       []float64
 	pivot    []int
 	drives   []drive
-	first    []float64
+	byRow    []int32   // drives of each row
+	first    []float64 // L at the end of the step
 }
 
 // drive is one entry of a driven piece.
 type drive struct {
-	row, col int32
-	piece    int32
-	val      float64
+	col   int32
+	piece int32
+	val   float64
 }
 
 func padeWeights(m int) []float64 {
@@ -50,10 +52,16 @@ func padeWeights(m int) []float64 {
 
 func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.w = w
-	if m := min(max(int(1+0.25*math.Log(1/accuracy)), 3), 7); m != b.m {
+	if m := min(max(int(0.3*math.Log(1/accuracy)+0.6), 3), 8); m != b.m {
 		b.m = m
 		b.weights = [2][]float64{padeWeights(m), padeWeights(m + 1)}
 		b.upper = hermiteUpper(m)
+		b.lower = make([]float64, (m+1)*(m+1))
+		for p := 0; p <= m; p++ {
+			for q := 0; q <= m; q++ {
+				b.lower[p*(m+1)+q] = binomial(q, p)
+			}
+		}
 	}
 	b.step = 0
 	n, block := w.l.n, (1+w.k)*w.l.n
@@ -62,14 +70,17 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.inside.reset(block, 2*b.m+1)
 	b.mats, b.lu, b.pivot = sized(b.mats, b.m*n*n), sized(b.lu, n*n), sized(b.pivot, n)
 	b.first = sized(b.first, len(w.vals))
-	b.drives = b.drives[:0]
-	for i := range w.driven {
-		d := &w.driven[i]
-		for r, row := range d.rows {
-			for e := d.start[r]; e < d.start[r+1]; e++ {
-				b.drives = append(b.drives, drive{row, d.col[e], int32(i), d.val[e]})
+	b.drives, b.byRow = b.drives[:0], append(b.byRow[:0], 0)
+	for i := int32(0); i < int32(n); i++ {
+		for j := range w.driven {
+			d := &w.driven[j]
+			for r, row := range d.rows {
+				for e := d.start[r]; row == i && e < d.start[r+1]; e++ {
+					b.drives = append(b.drives, drive{d.col[e], int32(j), d.val[e]})
+				}
 			}
 		}
+		b.byRow = append(b.byRow, int32(len(b.drives)))
 	}
 }
 
@@ -80,7 +91,7 @@ func (b *twoPoint) cost() float64 {
 	}
 	n, m := float64(b.w.l.n), float64(b.m)
 	matrices := n * (m*(float64(len(b.w.vals))+2*n) + float64(len(b.drives))*m*(m-1)/2)
-	return matrices + n*n*n/2 + 2*b.w.cost(b.m+1)
+	return 0.3*matrices + n*n*n/2 + float64(2*b.w.k)*b.w.cost(b.m+1)/float64(1+b.w.k)
 }
 
 // take takes a step of at most longest from the series in w.poly to the state
@@ -123,8 +134,10 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 					b.solve(w.next[q*n : (q+1)*n])
 				}
 				copy(b.ahead.c, w.next)
+				w.expand(&b.ahead, m+1)
+			} else {
+				b.series()
 			}
-			w.expand(&b.ahead, m+1)
 			worst = b.residual(h)
 		}
 		allowed := perTime * h
@@ -165,55 +178,137 @@ func (b *twoPoint) matrices() {
 			b.first[at] += f * p.val[e]
 		}
 	}
-	for p := 0; p < b.m; p++ {
+	one := b.mats[:n*n]
+	clear(one)
+	for i := 0; i < n; i++ {
+		for e := l.start[i]; e < l.start[i+1]; e++ {
+			one[i*n+int(l.col[e])] = b.first[e]
+		}
+	}
+	for p := 1; p < b.m; p++ {
+		if n == 9 {
+			b.next9(p)
+			continue
+		}
 		out := b.mats[p*n*n : (p+1)*n*n]
 		clear(out)
 		g := 1 / float64(p+1)
-		if p == 0 {
-			for i := 0; i < n; i++ {
-				for e := l.start[i]; e < l.start[i+1]; e++ {
-					out[i*n+int(l.col[e])] = b.first[e]
-				}
-			}
-			continue
-		}
-		before := b.mats[(p-1)*n*n : p*n*n]
 		for i := 0; i < n; i++ {
 			row := out[i*n : i*n+n]
 			for e := l.start[i]; e < l.start[i+1]; e++ {
-				addRow(row, before[int(l.col[e])*n:], g*b.first[e])
+				f := g * b.first[e]
+				for j, v := range b.mats[(p-1)*n*n+int(l.col[e])*n:][:len(row)] {
+					row[j] += f * v
+				}
 			}
-		}
-		for _, d := range b.drives {
-			f := w.driven[d.piece].f
-			row := out[int(d.row)*n : int(d.row)*n+n]
-			v := d.val * g
-			for i := 1; i < p; i++ {
-				addRow(row, b.mats[(p-1-i)*n*n+int(d.col)*n:], v*f[i])
+			for _, d := range b.drives[b.byRow[i]:b.byRow[i+1]] {
+				series := w.driven[d.piece].f
+				for q := 1; q < p; q++ {
+					f := d.val * g * series[q]
+					for j, v := range b.mats[(p-1-q)*n*n+int(d.col)*n:][:len(row)] {
+						row[j] += f * v
+					}
+				}
+				row[d.col] += d.val * g * series[p]
 			}
-			row[d.col] += v * f[p]
 		}
 	}
 }
 
-// addRow adds f·y to x.
-func addRow(x, y []float64, f float64) {
-	if len(x) == 9 {
-		a, b := (*[9]float64)(x), (*[9]float64)(y)
-		a[0] += f * b[0]
-		a[1] += f * b[1]
-		a[2] += f * b[2]
-		a[3] += f * b[3]
-		a[4] += f * b[4]
-		a[5] += f * b[5]
-		a[6] += f * b[6]
-		a[7] += f * b[7]
-		a[8] += f * b[8]
-		return
+// next9 is the same for nine coordinates; the sums stay in registers.
+func (b *twoPoint) next9(p int) {
+	l := b.w.l
+	out := b.mats[p*81 : (p+1)*81]
+	g := 1 / float64(p+1)
+	for i := 0; i < 9; i++ {
+		var s0, s1, s2, s3, s4, s5, s6, s7, s8 float64
+		before := b.mats[(p-1)*81 : p*81]
+		from, to := l.start[i], l.start[i+1]
+		col := l.col[from:to]
+		for e, v := range b.first[from:to] {
+			r := (*[9]float64)(before[9*int(col[e]):])
+			f := g * v
+			s0 += f * r[0]
+			s1 += f * r[1]
+			s2 += f * r[2]
+			s3 += f * r[3]
+			s4 += f * r[4]
+			s5 += f * r[5]
+			s6 += f * r[6]
+			s7 += f * r[7]
+			s8 += f * r[8]
+		}
+		drives := b.drives[b.byRow[i]:b.byRow[i+1]]
+		for j := range drives {
+			d := &drives[j]
+			v := d.val * g
+			at := (p-2)*81 + 9*int(d.col)
+			for _, u := range b.w.driven[d.piece].f[1:p] {
+				r := (*[9]float64)(b.mats[at:])
+				f := v * u
+				s0 += f * r[0]
+				s1 += f * r[1]
+				s2 += f * r[2]
+				s3 += f * r[3]
+				s4 += f * r[4]
+				s5 += f * r[5]
+				s6 += f * r[6]
+				s7 += f * r[7]
+				s8 += f * r[8]
+				at -= 81
+			}
+		}
+		row := (*[9]float64)(out[9*i:])
+		row[0], row[1], row[2], row[3], row[4], row[5], row[6], row[7], row[8] = s0, s1, s2, s3, s4, s5, s6, s7, s8
+		for j := range drives {
+			d := &drives[j]
+			row[d.col] += d.val * g * b.w.driven[d.piece].f[p]
+		}
 	}
-	y = y[:len(x)]
-	for i, v := range y {
-		x[i] += f * v
+}
+
+// series puts the coefficients of the state at the end of the step into ahead,
+// from its c_0: c_p = N_p c_0 up to m, then one more by the recursion.
+func (b *twoPoint) series() {
+	w := b.w
+	l := w.l
+	n, m := l.n, b.m
+	x := b.ahead.c[:n]
+	for p := 1; p <= m; p++ {
+		y := b.ahead.part(p, 0, n)
+		a := b.mats[(p-1)*n*n : p*n*n]
+		if n == 9 {
+			clear(y)
+			times9((*[9]float64)(y), (*[81]float64)(a), (*[9]float64)(x))
+			continue
+		}
+		for i := range y {
+			var s float64
+			row := a[i*n : i*n+n]
+			for j, v := range x {
+				s += row[j] * v
+			}
+			y[i] = s
+		}
+	}
+	last, y := b.ahead.part(m, 0, n), b.ahead.part(m+1, 0, n)
+	g := 1 / float64(m+1)
+	block := b.ahead.block
+	for i := 0; i < n; i++ {
+		var s float64
+		for e := l.start[i]; e < l.start[i+1]; e++ {
+			s += b.first[e] * last[l.col[e]]
+		}
+		for _, d := range b.drives[b.byRow[i]:b.byRow[i+1]] {
+			var u float64
+			at := (m-1)*block + int(d.col)
+			for _, f := range w.driven[d.piece].f[1 : m+1] {
+				u += f * b.ahead.c[at]
+				at -= block
+			}
+			s += d.val * u
+		}
+		y[i] = g * s
 	}
 }
 
@@ -317,7 +412,7 @@ func (b *twoPoint) fill(h float64) {
 		}
 		power *= h
 		for q := p; q <= m; q++ {
-			f := binomial(q, p)
+			f := b.lower[p*(m+1)+q]
 			for i, v := range in.c[q*block : (q+1)*block] {
 				r[i] -= f * v
 			}
