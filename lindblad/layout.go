@@ -263,11 +263,15 @@ func (l *Layout) generator(vals, coef []float64) {
 
 // times sets y = Lx for a generator on the pattern.
 func (l *Layout) times(y, vals, x []float64) {
-	for i := 0; i < l.n; i++ {
+	from := l.start[0]
+	for i, to := range l.start[1 : l.n+1] {
+		v := vals[from:to]
+		col := l.col[from:to][:len(v)]
 		var s float64
-		for e := l.start[i]; e < l.start[i+1]; e++ {
-			s += vals[e] * x[l.col[e]]
+		for e, a := range v {
+			s += a * x[col[e]]
 		}
 		y[i] = s
+		from = to
 	}
 }

@@ -6,9 +6,10 @@ import (
 )
 
 // cone keeps density matrices positive. The watch is a Cholesky factorisation
-// of ρ + 1e-13, block by block; a state that fails is replaced by the nearest
-// density matrix of the same trace (Smolin, Gambetta & Smith, Phys. Rev. Lett.
-// 108, 070502, 2012) or, where that would fill coordinates that cannot be
+// of ρ + 1e-13, block by block. A state that fails by next to nothing is mixed
+// with a little of the uniform state; one that fails by more is replaced by the
+// nearest density matrix of the same trace (Smolin, Gambetta & Smith, Phys. Rev.
+// Lett. 108, 070502, 2012) or, where that would fill coordinates that cannot be
 // reached, by the least mixture with the uniform state.
 type cone struct {
 	layout *Layout
@@ -87,12 +88,32 @@ func (w *cone) reset(l *Layout) {
 // that it had.
 func (w *cone) keep(l *Layout, x []float64) (low float64, repaired bool) {
 	w.reset(l)
-	for b := range w.blocks {
-		if !w.positive(l, x, b) {
-			return w.repair(l, x), true
+	if w.inside(l, x) {
+		return 0, false
+	}
+	// What rounding or a small error left goes by a small mixture.
+	uniform := l.trace(x) / float64(len(l.pops))
+	done := 0.0
+	for p := shift / uniform; p*uniform < smallRepair; p *= 2 {
+		w.mix(l, x, (p-done)/(1-done), uniform)
+		done = p
+		if w.inside(l, x) {
+			return -p * uniform, true
 		}
 	}
-	return 0, false
+	return w.repair(l, x), true
+}
+
+// smallRepair is the lowest eigenvalue up to which no nearest state is sought.
+const smallRepair = 1e-11
+
+func (w *cone) inside(l *Layout, x []float64) bool {
+	for b := range w.blocks {
+		if !w.positive(l, x, b) {
+			return false
+		}
+	}
+	return true
 }
 
 func (w *cone) load(l *Layout, x []float64, block []int) {
@@ -175,17 +196,10 @@ func (w *cone) repair(l *Layout, x []float64) float64 {
 	l.State(x, rho)
 	vec, val := hermitianEigen(rho, n)
 	low := math.Inf(1)
-	// Only levels that can be reached count.
 	order := make([]int, 0, n)
 	for i, v := range val {
 		low = math.Min(low, v)
 		order = append(order, i)
-	}
-	reachable := 0
-	for a := 0; a < n; a++ {
-		if l.index[a] >= 0 {
-			reachable++
-		}
 	}
 	before := append([]float64(nil), x...)
 	// Nearest: drop the lowest eigenvalues, spreading what they were.
@@ -221,21 +235,16 @@ func (w *cone) repair(l *Layout, x []float64) float64 {
 	for i, g := range l.global {
 		x[i] = coordinate(rho, n, int(g))
 	}
-	for b := range w.blocks {
-		if !w.positive(l, x, b) {
-			copy(x, before)
-			w.mix(l, x, low, reachable)
-			break
-		}
+	if !w.inside(l, x) {
+		copy(x, before)
+		uniform := l.trace(x) / float64(len(l.pops))
+		w.mix(l, x, -low/(uniform-low), uniform)
 	}
 	return low
 }
 
-// mix adds the least part of the uniform state over the reachable levels.
-func (w *cone) mix(l *Layout, x []float64, low float64, reachable int) {
-	tr := l.trace(x)
-	uniform := tr / float64(reachable)
-	p := -low / (uniform - low)
+// mix sets x = (1−p)x + p·(uniform state over the levels that can be reached).
+func (w *cone) mix(l *Layout, x []float64, p, uniform float64) {
 	for i := 0; i < l.reach; i++ {
 		x[i] *= 1 - p
 	}

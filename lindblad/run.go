@@ -117,6 +117,26 @@ func (s *Solver) warn(text string) {
 // rec.Samples = 0 emit is called once, at the end of the sequence.
 func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretches []Stretch, order []Node, rec Record,
 	emit func(sample int, x []float64, dx [][]float64) error) error {
+	if err := s.begin(ctx, x0, dx0, stretches, order, rec); err != nil {
+		return err
+	}
+	s.emit = emit
+	if err := s.playAll(order); err != nil {
+		return err
+	}
+	if s.rec.Samples == 0 {
+		s.keep()
+		copy(s.out, s.x)
+		return s.deliver(0)
+	}
+	if rec.During >= 0 && !s.clock.done {
+		return fmt.Errorf("lindblad: samples during stretch %d, which the order never plays", rec.During)
+	}
+	return s.handRest()
+}
+
+// begin checks what is to be played and sets the state and the clock.
+func (s *Solver) begin(ctx context.Context, x0 []float64, dx0 [][]float64, stretches []Stretch, order []Node, rec Record) error {
 	l := s.l
 	if len(x0) != l.n {
 		panic(fmt.Sprintf("lindblad: a state of length %d for a layout of %d", len(x0), l.n))
@@ -147,7 +167,7 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 		return fmt.Errorf("lindblad: samples during stretch %d of %d", rec.During, len(stretches))
 	}
 	n := l.n
-	s.ctx, s.stretches, s.rec, s.emit = ctx, stretches, rec, emit
+	s.ctx, s.stretches, s.rec = ctx, stretches, rec
 	s.x, s.y, s.out = zeroed(s.x, (1+s.k)*n), sized(s.y, (1+s.k)*n), sized(s.out, (1+s.k)*n)
 	copy(s.x, x0)
 	for j, d := range dx0 {
@@ -177,18 +197,7 @@ func (s *Solver) Run(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 	s.trace = l.trace(x0)
 	s.watch = math.Inf(1)
 	s.startClock(order)
-	if err := s.playAll(order); err != nil {
-		return err
-	}
-	if rec.Samples == 0 {
-		s.keep()
-		copy(s.out, s.x)
-		return s.deliver(0)
-	}
-	if rec.During >= 0 && !s.clock.done {
-		return fmt.Errorf("lindblad: samples during stretch %d, which the order never plays", rec.During)
-	}
-	return s.handRest()
+	return nil
 }
 
 // total adds the duration of the order and its slopes.
@@ -223,7 +232,7 @@ func (s *Solver) startClock(order []Node) {
 	shaped := s.total(order, 1, &c.total, c.dtotal)
 	s.perTime = 0
 	if shaped > 0 {
-		s.perTime = 0.5 * s.accuracy / shaped
+		s.perTime = 0.8 * s.accuracy / shaped
 	}
 	c.set()
 }

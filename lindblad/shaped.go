@@ -57,7 +57,7 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 		stop := f.breakAfter(t, lasts)
 		rest := stop - t
 		trial := method
-		if b.possible && (since >= tryAgain || count == 1) {
+		if b.possible && (since >= tryAgain || count == 1 && last < rest/4) {
 			trial, since = 1-method, 0
 		}
 		since++

@@ -44,14 +44,21 @@ type taylor struct {
 	series [4][maxOrder + 1]float64
 }
 
+var logFactorial = func() (c [maxOrder + 1]float64) {
+	for i := 1; i < len(c); i++ {
+		c[i] = c[i-1] + math.Log(float64(i))
+	}
+	return
+}()
+
 // bestOrder returns the order that makes the most progress per multiplication
 // when a step may err by tolerance: order K reaches h with (h‖L‖)^{K+1}/(K+1)!
 // of that size.
 func (w *taylor) bestOrder(tolerance float64) int {
 	best, most := 0, 0.0
+	log := math.Log(tolerance)
 	for k := 6; k < maxOrder; k++ {
-		log, _ := math.Lgamma(float64(k + 2))
-		h := math.Exp((math.Log(tolerance) + log) / float64(k+1))
+		h := math.Exp((log + logFactorial[k+1]) / float64(k+1))
 		if v := math.Min(h, 0.7*float64(k)) / w.cost(k); v > most {
 			best, most = k, v
 		}
