@@ -85,7 +85,8 @@ func (s *Solver) propagator(i int, duration float64) *propagator {
 		s.l.generator(vals, st.Slopes[j].Coef)
 		s.exp.a.put(s.l, 1+m, vals, duration)
 	}
-	q, squarings := s.exp.run(s.l.pops)
+	q, squarings, size := s.exp.run(s.l.pops)
+	s.limited(1e-16 * size)
 	p.q.copyFrom(q)
 	p.worst = rounding(s.l.n, squarings)
 	s.memory.put(s.l, s.key, q, p.worst)

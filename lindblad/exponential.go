@@ -35,12 +35,12 @@ func (w *exponential) reset(l *Layout, k int) {
 	w.a.likeLayout(l)
 }
 
-// run returns Q with derivatives for the matrix w.a, and how many squarings it
-// took. The result is overwritten by the next run.
-func (w *exponential) run(pops []int32) (*full, int) {
+// run returns Q with derivatives for the matrix w.a, how many squarings it took
+// and the size of the matrix. The result is overwritten by the next run.
+func (w *exponential) run(pops []int32) (q *full, squarings int, size float64) {
 	w.a2.multiply(&w.a, &w.a)
 	w.a3.multiply(&w.a2, &w.a)
-	size := math.Min(w.a.norm(), math.Max(math.Sqrt(w.a2.norm()), math.Cbrt(w.a3.norm())))
+	size = math.Min(w.a.norm(), math.Max(math.Sqrt(w.a2.norm()), math.Cbrt(w.a3.norm())))
 	s := 0
 	if size > radius {
 		s = int(math.Ceil(math.Log2(size / radius)))
@@ -72,7 +72,7 @@ func (w *exponential) run(pops []int32) (*full, int) {
 		y, z = z, y
 		y.conserve(pops, w.spare)
 	}
-	return y, s
+	return y, s, size
 }
 
 // sum sets x = f·y + c3·A³ + c2·A² + c1·A + c0.

@@ -46,3 +46,14 @@ func (p *polynomial) slopeAt(y []float64, tau float64) {
 		}
 	}
 }
+
+// rounding is what rounding may leave in the derivative at τ.
+func (p *polynomial) rounding(tau float64) float64 {
+	var sum float64
+	power := 1.0
+	for i := 1; i <= p.order; i++ {
+		sum += power * float64(i) * largest(p.c[i*p.block:(i+1)*p.block])
+		power *= tau
+	}
+	return 2e-15 * sum
+}

@@ -14,11 +14,10 @@ import (
 type cone struct {
 	layout *Layout
 	made   uint64
-	blocks [][]int
-	places [][]int // of each block: populations, then real and imaginary parts
-	rho    []complex128
-	vec    []complex128
-	val    []float64
+	blocks [][]int      // levels joined by coherences that can be reached
+	places [][]int      // of each block: populations, then real and imaginary parts
+	rho    []complex128 // scratch space
+	saved  []float64
 }
 
 const shift = 1e-13
@@ -93,6 +92,7 @@ func (w *cone) keep(l *Layout, x []float64) (low float64, repaired bool) {
 	}
 	// What rounding or a small error left goes by a small mixture.
 	uniform := l.trace(x) / float64(len(l.pops))
+	w.saved = append(w.saved[:0], x...)
 	done := 0.0
 	for p := shift / uniform; p*uniform < smallRepair; p *= 2 {
 		w.mix(l, x, (p-done)/(1-done), uniform)
@@ -101,6 +101,7 @@ func (w *cone) keep(l *Layout, x []float64) (low float64, repaired bool) {
 			return -p * uniform, true
 		}
 	}
+	copy(x, w.saved)
 	return w.repair(l, x), true
 }
 
@@ -201,7 +202,6 @@ func (w *cone) repair(l *Layout, x []float64) float64 {
 		low = math.Min(low, v)
 		order = append(order, i)
 	}
-	before := append([]float64(nil), x...)
 	// Nearest: drop the lowest eigenvalues, spreading what they were.
 	for i := 1; i < len(order); i++ {
 		for j := i; j > 0 && val[order[j]] < val[order[j-1]]; j-- {
@@ -236,7 +236,7 @@ func (w *cone) repair(l *Layout, x []float64) float64 {
 		x[i] = coordinate(rho, n, int(g))
 	}
 	if !w.inside(l, x) {
-		copy(x, before)
+		copy(x, w.saved)
 		uniform := l.trace(x) / float64(len(l.pops))
 		w.mix(l, x, -low/(uniform-low), uniform)
 	}

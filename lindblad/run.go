@@ -102,6 +102,13 @@ func (s *Solver) Stats() Stats { return s.stats }
 // Warnings returns doubts about the results so far.
 func (s *Solver) Warnings() []string { return s.warnings }
 
+// limited warns when rounding errs by more than was asked.
+func (s *Solver) limited(rounding float64) {
+	if rounding > s.accuracy {
+		s.warn("rounding limits the result to an error above the accuracy asked for: fast frequencies for a long time; give them a frame of their own")
+	}
+}
+
 func (s *Solver) warn(text string) {
 	for _, w := range s.warnings {
 		if w == text {
@@ -622,6 +629,7 @@ func (s *Solver) playShaped(i int) error {
 	if err != nil {
 		return err
 	}
+	s.limited(s.shaped.taylor.rounded)
 	if s.slides(st) {
 		w := &s.shaped.taylor
 		w.coefficients(&f, st.Lasts, 0)

@@ -39,6 +39,7 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 	if b.possible {
 		b.prepare(a, accuracy)
 	}
+	a.rounded = 0
 	w.trace = sized(w.trace, 1+k)
 	for q := range w.trace {
 		w.trace[q] = l.trace(x[q*n:])
@@ -129,7 +130,12 @@ func (w *taylor) explicit(f *field, t, longest, perTime float64, stats *Stats) (
 	for tries := 0; ; tries++ {
 		w.poly.at(w.next, h)
 		w.poly.slopeAt(w.slope, h)
-		if w.defect(f, t+h) <= perTime*float64(w.poly.order) {
+		d := w.defect(f, t+h)
+		if d <= perTime*float64(w.poly.order) {
+			return h, nil
+		}
+		if r := w.poly.rounding(h); d <= r {
+			w.rounded += r * h / float64(w.poly.order)
 			return h, nil
 		}
 		if tries > 100 {

@@ -32,16 +32,17 @@ type driven struct {
 }
 
 type taylor struct {
-	l      *Layout
-	k      int         // directions
-	vals   []float64   // L₀ on the pattern
-	dvals  [][]float64 // slopes, nil: zero
-	driven []driven
-	poly   polynomial // the series at the start of the step
-	next   []float64  // the state at its end
-	slope  []float64
-	spare  []float64
-	series [4][maxOrder + 1]float64
+	l       *Layout
+	k       int         // directions
+	vals    []float64   // L₀ on the pattern
+	dvals   [][]float64 // slopes, nil: zero
+	driven  []driven
+	poly    polynomial // the series at the start of the step
+	next    []float64  // the state at its end
+	rounded float64    // error of steps that rounding limits
+	slope   []float64
+	spare   []float64
+	series  [4][maxOrder + 1]float64
 }
 
 var logFactorial = func() (c [maxOrder + 1]float64) {

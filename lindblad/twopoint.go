@@ -33,6 +33,9 @@ type twoPoint struct {
 	first    []float64 // L at the end of the step
 }
 
+// roundingStep is an error that a step may have whatever was asked: rounding.
+const roundingStep = 2e-15
+
 // drive is one entry of a driven piece.
 type drive struct {
 	col   int32
@@ -140,7 +143,7 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 			}
 			worst = b.residual(h)
 		}
-		allowed := perTime * h
+		allowed := math.Max(perTime*h, roundingStep)
 		grow := 3.0
 		if worst > 0 {
 			grow = math.Min(3, 0.9*math.Pow(allowed/worst, 1/float64(2*m)))
@@ -150,6 +153,9 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 				b.step = math.Max(b.step, h*grow)
 			} else {
 				b.step = h * grow
+			}
+			if worst > perTime*h {
+				w.rounded += worst
 			}
 			b.fill(h)
 			return h, nil
