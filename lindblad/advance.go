@@ -26,7 +26,7 @@ func (s *Solver) advance(i int, duration float64) error {
 		accuracy := 0.1 * s.accuracy
 		s.watch += accuracy
 		f := field{&c, s.theta, s.dtheta}
-		return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, duration, accuracy, &s.stats, func(float64, float64, *polynomial) error { return nil })
+		return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, duration, accuracy, &s.stats, func(float64, float64, within) error { return nil })
 	}
 	p := s.propagator(i, duration)
 	s.apply(p)

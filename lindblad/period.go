@@ -143,7 +143,7 @@ func (s *Solver) part(st *Stretch, from, to float64) error {
 	return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, to-from, s.perTime*(to-from), &s.stats, ignore)
 }
 
-func ignore(float64, float64, *polynomial) error { return nil }
+func ignore(float64, float64, within) error { return nil }
 
 // turned returns the phases of the rotors at a time within the stretch.
 func (w *periodic) turned(s *Solver, st *Stretch, t float64) []float64 {

@@ -595,7 +595,7 @@ func (s *Solver) playShaped(i int) error {
 	n := s.l.n
 	f := field{st, s.theta, s.dtheta}
 	start := c.now
-	err := s.shaped.run(s.ctx, s.l, &f, s.x, s.k, st.Lasts, s.perTime*st.Lasts, &s.stats, func(from, step float64, p *polynomial) error {
+	err := s.shaped.run(s.ctx, s.l, &f, s.x, s.k, st.Lasts, s.perTime*st.Lasts, &s.stats, func(from, step float64, p within) error {
 		end := start + from + step
 		if from+step >= st.Lasts {
 			end = start + st.Lasts

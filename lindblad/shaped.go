@@ -18,7 +18,13 @@ type shaped struct {
 }
 
 // visitor sees each step before the state moves on: p is the state within it.
-type visitor func(from, step float64, p *polynomial) error
+type visitor func(from, step float64, p within) error
+
+// within is the state within a step, by the time since its start.
+type within interface {
+	at(y []float64, tau float64)
+	slopeAt(y []float64, tau float64)
+}
 
 const (
 	tryAgain     = 24 // steps after which the other method is tried
@@ -64,13 +70,14 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 		since++
 		var h float64
 		var err error
-		var p *polynomial
+		var p within
 		if trial == 0 {
 			if have < order {
 				a.coefficients(f, t, order)
 				a.expand(&a.poly, order)
 			}
-			h, err = a.explicit(f, t, math.Min(limit, rest), perTime, stats)
+			h, err = a.explicit(f, t, math.Min(limit, rest), 0.5*perTime, stats)
+			b.forget()
 			p = &a.poly
 			limit = 3 * h
 			last = h

@@ -12,20 +12,24 @@ import "math"
 // coefficients of the matrix equation dN/dt = L N from N = 1. The scheme is
 // stable for every decaying generator, however large h‖L‖ is. Its error is
 // estimated by the residual of the same formula with m + 1, through the same
-// factors. Within the step the state is the polynomial that has all the
-// derivatives of both ends.
+// factors. The estimated errors are carried along by the same steps: where the
+// generator damps them, later steps may err more. Within the step the state is
+// the polynomial that has all the derivatives of both ends.
 type twoPoint struct {
 	possible bool
 	w        *taylor
 	m        int
 	weights  [2][]float64 // for m and m+1
-	lower    []float64    // the binomials C(q, p)
-	upper    []float64    // inverse of the binomials C(m+1+r, p)
 	step     float64      // proposal for the next one
 	ahead    polynomial   // series at the end of the step
-	source   polynomial
-	inside   polynomial // state within the step
-	mats     []float64  // N_1 … N_m, n×n each
+	inside   hermite      // the state within the step
+	mats     []float64    // N_1 … N_m at the end of the step, n×n each
+	before   []float64    // and at its start, when it was the end of a step
+	known    bool
+	local    []float64 // estimated error of the step
+	global   []float64 // of the steps before
+	carried  float64   // size of errors that are no longer followed
+	budget   float64
 	lu       []float64
 	pivot    []int
 	drives   []drive
@@ -58,20 +62,15 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	if m := min(max(int(0.3*math.Log(1/accuracy)+0.6), 3), 8); m != b.m {
 		b.m = m
 		b.weights = [2][]float64{padeWeights(m), padeWeights(m + 1)}
-		b.upper = hermiteUpper(m)
-		b.lower = make([]float64, (m+1)*(m+1))
-		for p := 0; p <= m; p++ {
-			for q := 0; q <= m; q++ {
-				b.lower[p*(m+1)+q] = binomial(q, p)
-			}
-		}
+		b.inside.reset(m)
 	}
-	b.step = 0
+	b.step, b.carried, b.known = 0, 0, false
 	n, block := w.l.n, (1+w.k)*w.l.n
 	b.ahead.reset(block, maxOrder)
-	b.source.reset(block, b.m+1)
-	b.inside.reset(block, 2*b.m+1)
 	b.mats, b.lu, b.pivot = sized(b.mats, b.m*n*n), sized(b.lu, n*n), sized(b.pivot, n)
+	b.before = sized(b.before, b.m*n*n)
+	b.local, b.global = sized(b.local, n), zeroed(b.global, n)
+	b.budget = 0.5 * accuracy
 	b.first = sized(b.first, len(w.vals))
 	b.drives, b.byRow = b.drives[:0], append(b.byRow[:0], 0)
 	for i := int32(0); i < int32(n); i++ {
@@ -143,10 +142,13 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 			}
 			worst = b.residual(h)
 		}
-		allowed := math.Max(perTime*h, roundingStep)
+		allowed := math.Max(0.5*perTime*h, roundingStep)
+		if k == 0 {
+			allowed += 0.25 * math.Max(0, b.budget-b.carried-largest(b.global))
+		}
 		grow := 3.0
 		if worst > 0 {
-			grow = math.Min(3, 0.9*math.Pow(allowed/worst, 1/float64(2*m)))
+			grow = math.Min(3, 0.9*math.Pow(allowed/worst, 1/float64(2*m+1)))
 		}
 		if worst <= allowed {
 			if h < b.step { // cut by the end
@@ -157,7 +159,8 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 			if worst > perTime*h {
 				w.rounded += worst
 			}
-			b.fill(h)
+			b.inside.h, b.inside.start, b.inside.end = h, &w.poly, &b.ahead
+			b.carry(h)
 			return h, nil
 		}
 		stats.Rejected++
@@ -318,6 +321,47 @@ func (b *twoPoint) series() {
 	}
 }
 
+// carry follows the error through the step: it decays or turns as the state
+// does, and the step's own is added.
+func (b *twoPoint) carry(h float64) {
+	n := b.w.l.n
+	if b.known {
+		g := b.global
+		e := b.w.spare
+		copy(e, g)
+		power := 1.0
+		for p := 1; p <= b.m; p++ {
+			power *= h
+			f := b.weights[0][p] * power
+			a := b.before[(p-1)*n*n : p*n*n]
+			for i := range e {
+				var s float64
+				row := a[i*n : i*n+n]
+				for j, v := range g {
+					s += row[j] * v
+				}
+				e[i] += f * s
+			}
+		}
+		b.solve(e)
+		for i, v := range b.local {
+			g[i] = e[i] + v
+		}
+	} else {
+		b.forget()
+		copy(b.global, b.local)
+	}
+	b.mats, b.before = b.before, b.mats
+	b.known = true
+}
+
+// forget counts the error followed so far at its size.
+func (b *twoPoint) forget() {
+	b.carried += largest(b.global)
+	clear(b.global)
+	b.known = false
+}
+
 // system sets lu = Σ w_p (−h)^p N_p.
 func (b *twoPoint) system(h float64) {
 	n := b.w.l.n
@@ -387,83 +431,13 @@ func (b *twoPoint) residual(h float64) float64 {
 			size = math.Max(largest(w.next[q*n:(q+1)*n]), largest(w.poly.part(0, q, n)))
 			size = math.Max(size, 1e-300)
 		}
+		if q == 0 {
+			copy(b.local, e)
+		}
 		v := largest(e) / size
 		if !(v <= worst) {
 			worst = v
 		}
 	}
 	return worst
-}
-
-// fill makes the polynomial that has all m derivatives of both ends.
-func (b *twoPoint) fill(h float64) {
-	m, block := b.m, b.inside.block
-	in := &b.inside
-	in.order, in.scale = 2*m+1, h
-	power := 1.0
-	for p := 0; p <= m; p++ {
-		x, y := b.w.poly.c[p*block:(p+1)*block], in.c[p*block:(p+1)*block]
-		for i, v := range x {
-			y[i] = power * v
-		}
-		power *= h
-	}
-	// what the derivatives at the end are beyond those of the lower half
-	rest := b.source.c
-	power = 1
-	for p := 0; p <= m; p++ {
-		r := rest[p*block : (p+1)*block]
-		for i, v := range b.ahead.c[p*block : (p+1)*block] {
-			r[i] = power * v
-		}
-		power *= h
-		for q := p; q <= m; q++ {
-			f := b.lower[p*(m+1)+q]
-			for i, v := range in.c[q*block : (q+1)*block] {
-				r[i] -= f * v
-			}
-		}
-	}
-	for r := 0; r <= m; r++ {
-		y := in.c[(m+1+r)*block : (m+2+r)*block]
-		clear(y)
-		for p := 0; p <= m; p++ {
-			f := b.upper[r*(m+1)+p]
-			for i, v := range rest[p*block : (p+1)*block] {
-				y[i] += f * v
-			}
-		}
-	}
-}
-
-func binomial(n, k int) float64 {
-	v := 1.0
-	for i := 0; i < k; i++ {
-		v = v * float64(n-i) / float64(i+1)
-	}
-	return math.Round(v)
-}
-
-// hermiteUpper is the inverse of the matrix C(m+1+r, p), p, r = 0 … m; its
-// elements are whole numbers.
-func hermiteUpper(m int) []float64 {
-	n := m + 1
-	a, pivot := make([]float64, n*n), make([]int, n)
-	for p := 0; p < n; p++ {
-		for r := 0; r < n; r++ {
-			a[p*n+r] = binomial(m+1+r, p)
-		}
-	}
-	factor(a, pivot, n)
-	out := make([]float64, n*n)
-	e := make([]float64, n)
-	for p := 0; p < n; p++ {
-		clear(e)
-		e[p] = 1
-		solve(a, pivot, n, e)
-		for r := 0; r < n; r++ {
-			out[r*n+p] = math.Round(e[r])
-		}
-	}
-	return out
 }
