@@ -23,7 +23,7 @@ type twoPoint struct {
 	step     float64      // proposal for the next one
 	ahead    polynomial   // series at the end of the step
 	inside   hermite      // the state within the step
-	mats     []float64    // N_1 … N_m at the end of the step, n×n each
+	mats     []float64    // N_0 … N_m at the end of the step, n×n each
 	before   []float64    // and at its start, when it was the end of a step
 	known    bool
 	local    []float64 // estimated error of the step
@@ -33,8 +33,10 @@ type twoPoint struct {
 	lu       []float64
 	pivot    []int
 	drives   []drive
-	byRow    []int32   // drives of each row
-	first    []float64 // L at the end of the step
+	byRow    []int32 // drives of each row
+	terms    []rowTerm
+	rows     []int32 // where the terms of each row begin
+	coef     []float64
 }
 
 // roundingStep is an error that a step may have whatever was asked: rounding.
@@ -67,11 +69,10 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.step, b.carried, b.known = 0, 0, false
 	n, block := w.l.n, (1+w.k)*w.l.n
 	b.ahead.reset(block, maxOrder)
-	b.mats, b.lu, b.pivot = sized(b.mats, b.m*n*n), sized(b.lu, n*n), sized(b.pivot, n)
-	b.before = sized(b.before, b.m*n*n)
+	b.mats, b.lu, b.pivot = sized(b.mats, (b.m+1)*n*n), sized(b.lu, n*n), sized(b.pivot, n)
+	b.before = sized(b.before, (b.m+1)*n*n)
 	b.local, b.global = sized(b.local, n), zeroed(b.global, n)
 	b.budget = 0.5 * accuracy
-	b.first = sized(b.first, len(w.vals))
 	b.drives, b.byRow = b.drives[:0], append(b.byRow[:0], 0)
 	for i := int32(0); i < int32(n); i++ {
 		for j := range w.driven {
@@ -84,6 +85,7 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 		}
 		b.byRow = append(b.byRow, int32(len(b.drives)))
 	}
+	b.lay()
 }
 
 // cost counts the multiplications of one step.
@@ -172,108 +174,110 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 	return 0, nil
 }
 
-// matrices computes N_1 … N_m for the series that coefficients has left:
-// (p+1) N_{p+1} = Σ_i L_i N_{p−i}, N_0 = 1.
-func (b *twoPoint) matrices() {
+// lay prepares the recursion (p+1) N_{p+1} = Σ_i L_i N_{p−i}, N_0 = 1: which
+// rows of which matrices each row is the sum of, and where the factors stand in
+// coef: the entries of L, then f_1 … f_m of every driven piece. Each row has an
+// even number of terms.
+func (b *twoPoint) lay() {
 	w := b.w
 	l := w.l
-	n := l.n
-	copy(b.first, w.vals)
-	for i := range w.driven {
-		d := &w.driven[i]
-		p := &l.pieces[d.piece]
-		f := d.f[0]
-		for e, at := range p.at {
-			b.first[at] += f * p.val[e]
-		}
-	}
-	one := b.mats[:n*n]
-	clear(one)
-	for i := 0; i < n; i++ {
-		for e := l.start[i]; e < l.start[i+1]; e++ {
-			one[i*n+int(l.col[e])] = b.first[e]
-		}
-	}
-	for p := 1; p < b.m; p++ {
-		if n == 9 {
-			b.next9(p)
-			continue
-		}
-		out := b.mats[p*n*n : (p+1)*n*n]
-		clear(out)
+	n, m := l.n, b.m
+	b.coef = sized(b.coef, len(w.vals)+m*len(w.driven))
+	b.terms, b.rows = b.terms[:0], append(b.rows[:0], 0)
+	for p := 0; p < m; p++ {
 		g := 1 / float64(p+1)
 		for i := 0; i < n; i++ {
-			row := out[i*n : i*n+n]
 			for e := l.start[i]; e < l.start[i+1]; e++ {
-				f := g * b.first[e]
-				for j, v := range b.mats[(p-1)*n*n+int(l.col[e])*n:][:len(row)] {
-					row[j] += f * v
-				}
+				b.terms = append(b.terms, rowTerm{int32(p*n*n + int(l.col[e])*n), e, g})
 			}
 			for _, d := range b.drives[b.byRow[i]:b.byRow[i+1]] {
-				series := w.driven[d.piece].f
-				for q := 1; q < p; q++ {
-					f := d.val * g * series[q]
-					for j, v := range b.mats[(p-1-q)*n*n+int(d.col)*n:][:len(row)] {
-						row[j] += f * v
-					}
+				for q := 1; q <= p; q++ {
+					b.terms = append(b.terms, rowTerm{int32((p-q)*n*n + int(d.col)*n), int32(len(w.vals) + m*int(d.piece) + q - 1), g * d.val})
 				}
-				row[d.col] += d.val * g * series[p]
+			}
+			if (len(b.terms)-int(b.rows[len(b.rows)-1]))%2 == 1 {
+				b.terms = append(b.terms, rowTerm{})
+			}
+			b.rows = append(b.rows, int32(len(b.terms)))
+		}
+	}
+	for _, mats := range [][]float64{b.mats, b.before} {
+		clear(mats[:n*n])
+		addIdentity(mats, n)
+	}
+}
+
+func addIdentity(a []float64, n int) {
+	for i := 0; i < n; i++ {
+		a[i*n+i]++
+	}
+}
+
+// rowTerm is a multiple of a row of one of the matrices.
+type rowTerm struct {
+	at, coef int32
+	factor   float64
+}
+
+// matrices computes N_1 … N_m for the series that coefficients has left.
+func (b *twoPoint) matrices() {
+	w := b.w
+	n := w.l.n
+	entries := len(w.vals)
+	copy(b.coef, w.vals)
+	for i := range w.driven {
+		d := &w.driven[i]
+		p := &w.l.pieces[d.piece]
+		f := d.f[0]
+		for e, at := range p.at {
+			b.coef[at] += f * p.val[e]
+		}
+		copy(b.coef[entries+i*b.m:entries+(i+1)*b.m], d.f[1:])
+	}
+	out := b.mats[n*n:]
+	for r, from := range b.rows[:n*b.m] {
+		terms := b.terms[from:b.rows[r+1]]
+		row := out[r*n : r*n+n]
+		if n == 9 {
+			sumRows9((*[9]float64)(row), b.mats, terms, b.coef)
+			continue
+		}
+		clear(row)
+		for _, t := range terms {
+			f := t.factor * b.coef[t.coef]
+			for j, v := range b.mats[t.at:][:len(row)] {
+				row[j] += f * v
 			}
 		}
 	}
 }
 
-// next9 is the same for nine coordinates; the sums stay in registers.
-func (b *twoPoint) next9(p int) {
-	l := b.w.l
-	out := b.mats[p*81 : (p+1)*81]
-	g := 1 / float64(p+1)
-	for i := 0; i < 9; i++ {
-		var s0, s1, s2, s3, s4, s5, s6, s7, s8 float64
-		before := b.mats[(p-1)*81 : p*81]
-		from, to := l.start[i], l.start[i+1]
-		col := l.col[from:to]
-		for e, v := range b.first[from:to] {
-			r := (*[9]float64)(before[9*int(col[e]):])
-			f := g * v
-			s0 += f * r[0]
-			s1 += f * r[1]
-			s2 += f * r[2]
-			s3 += f * r[3]
-			s4 += f * r[4]
-			s5 += f * r[5]
-			s6 += f * r[6]
-			s7 += f * r[7]
-			s8 += f * r[8]
-		}
-		drives := b.drives[b.byRow[i]:b.byRow[i+1]]
-		for j := range drives {
-			d := &drives[j]
-			v := d.val * g
-			at := (p-2)*81 + 9*int(d.col)
-			for _, u := range b.w.driven[d.piece].f[1:p] {
-				r := (*[9]float64)(b.mats[at:])
-				f := v * u
-				s0 += f * r[0]
-				s1 += f * r[1]
-				s2 += f * r[2]
-				s3 += f * r[3]
-				s4 += f * r[4]
-				s5 += f * r[5]
-				s6 += f * r[6]
-				s7 += f * r[7]
-				s8 += f * r[8]
-				at -= 81
-			}
-		}
-		row := (*[9]float64)(out[9*i:])
-		row[0], row[1], row[2], row[3], row[4], row[5], row[6], row[7], row[8] = s0, s1, s2, s3, s4, s5, s6, s7, s8
-		for j := range drives {
-			d := &drives[j]
-			row[d.col] += d.val * g * b.w.driven[d.piece].f[p]
-		}
+// sumRows9 adds up terms, two at a time and the columns in two goes, so that
+// the sums stay in registers.
+func sumRows9(row *[9]float64, mats []float64, terms []rowTerm, coef []float64) {
+	var s0, s1, s2, s3, s4 float64
+	for i := 0; i+1 < len(terms); i += 2 {
+		t, u := &terms[i], &terms[i+1]
+		x, y := (*[5]float64)(mats[t.at:]), (*[5]float64)(mats[u.at:])
+		f, g := t.factor*coef[t.coef], u.factor*coef[u.coef]
+		s0 += f*x[0] + g*y[0]
+		s1 += f*x[1] + g*y[1]
+		s2 += f*x[2] + g*y[2]
+		s3 += f*x[3] + g*y[3]
+		s4 += f*x[4] + g*y[4]
 	}
+	row[0], row[1], row[2], row[3], row[4] = s0, s1, s2, s3, s4
+	s0, s1, s2, s3 = 0, 0, 0, 0
+	for i := 0; i+1 < len(terms); i += 2 {
+		t, u := &terms[i], &terms[i+1]
+		x, y := (*[4]float64)(mats[t.at+5:]), (*[4]float64)(mats[u.at+5:])
+		f, g := t.factor*coef[t.coef], u.factor*coef[u.coef]
+		s0 += f*x[0] + g*y[0]
+		s1 += f*x[1] + g*y[1]
+		s2 += f*x[2] + g*y[2]
+		s3 += f*x[3] + g*y[3]
+	}
+	row[5], row[6], row[7], row[8] = s0, s1, s2, s3
 }
 
 // series puts the coefficients of the state at the end of the step into ahead,
@@ -285,7 +289,7 @@ func (b *twoPoint) series() {
 	x := b.ahead.c[:n]
 	for p := 1; p <= m; p++ {
 		y := b.ahead.part(p, 0, n)
-		a := b.mats[(p-1)*n*n : p*n*n]
+		a := b.mats[p*n*n : (p+1)*n*n]
 		if n == 9 {
 			clear(y)
 			times9((*[9]float64)(y), (*[81]float64)(a), (*[9]float64)(x))
@@ -306,7 +310,7 @@ func (b *twoPoint) series() {
 	for i := 0; i < n; i++ {
 		var s float64
 		for e := l.start[i]; e < l.start[i+1]; e++ {
-			s += b.first[e] * last[l.col[e]]
+			s += b.coef[e] * last[l.col[e]]
 		}
 		for _, d := range b.drives[b.byRow[i]:b.byRow[i+1]] {
 			var u float64
@@ -333,7 +337,7 @@ func (b *twoPoint) carry(h float64) {
 		for p := 1; p <= b.m; p++ {
 			power *= h
 			f := b.weights[0][p] * power
-			a := b.before[(p-1)*n*n : p*n*n]
+			a := b.before[p*n*n : (p+1)*n*n]
 			for i := range e {
 				var s float64
 				row := a[i*n : i*n+n]
@@ -368,7 +372,7 @@ func (b *twoPoint) system(h float64) {
 	sign := -h
 	for p := 1; p <= b.m; p++ {
 		f := b.weights[0][p] * sign
-		a := b.mats[(p-1)*n*n : p*n*n]
+		a := b.mats[p*n*n : (p+1)*n*n]
 		lu := b.lu[:len(a)]
 		if p == 1 {
 			for i, v := range a {
