@@ -3,18 +3,18 @@ package fit
 import "math"
 
 // differenceLevels is the number of steps that each slope is computed with,
-// the first a sixteenth of the parameter, each later one half of the one
-// before: from 0.06 to 4e-6 of it.
-const differenceLevels = 15
+// the first an eighth of the parameter, each later one half of the one before:
+// from 0.1 to 4e-6 of it.
+const differenceLevels = 16
 
 // Differences makes a Model of residuals without slopes. These come from
 // central differences with steps halved again and again, extrapolated to step
 // zero, each slope by the extrapolation that changes least from its
 // neighbours (C. J. F. Ridders, Adv. Eng. Software 4, 75 (1982)). For smooth
-// residuals some twelve digits are right, at the price of 30 calls per
+// residuals some twelve digits are right, at the price of 32 calls per
 // parameter. Steps at which the residuals are not finite are left out.
 //
-// Steps may go past bounds of the fit by a sixteenth of a parameter; residuals
+// Steps may go past bounds of the fit by an eighth of a parameter; residuals
 // that cannot be computed there are to be NaN.
 func Differences(residuals func(params, residuals []float64) error) Model {
 	return func(params, r, jacobian []float64) error {
@@ -24,10 +24,9 @@ func Differences(residuals func(params, residuals []float64) error) Model {
 		d := differences{residuals: residuals, m: len(r), n: len(params)}
 		d.x = append(d.x, params...)
 		d.above, d.below = make([]float64, d.m), make([]float64, d.m)
-		d.row = make([]float64, differenceLevels*d.m)
-		d.change = make([]float64, d.m)
+		d.central = make([]float64, differenceLevels*d.m)
 		for j := range params {
-			if err := d.slope(j, r, jacobian); err != nil {
+			if err := d.slope(j, jacobian); err != nil {
 				return err
 			}
 		}
@@ -40,22 +39,21 @@ type differences struct {
 	m, n         int
 	x            []float64
 	above, below []float64
-	row          []float64 // extrapolations of the last level: order × residual
-	change       []float64 // of the best extrapolation so far
+	steps        []float64
+	central      []float64 // level × residual
+	tableau      [differenceLevels]float64
+	estimate     [differenceLevels]float64 // the best of each level
+	doubt        [differenceLevels]float64 // its error, estimated
 }
 
-func (d *differences) slope(j int, r, jacobian []float64) error {
+func (d *differences) slope(j int, jacobian []float64) error {
 	at := d.x[j]
 	defer func() { d.x[j] = at }()
-	step := math.Abs(at) / 16
+	step := math.Abs(at) / 8
 	if step == 0 {
-		step = 1.0 / 16
+		step = 1.0 / 8
 	}
-	for i := range d.m {
-		d.change[i] = math.Inf(1)
-		jacobian[i*d.n+j] = math.NaN()
-	}
-	levels := 0
+	d.steps = d.steps[:0]
 	for range differenceLevels {
 		up, down := at+step, at-step
 		step /= 2
@@ -70,39 +68,65 @@ func (d *differences) slope(j int, r, jacobian []float64) error {
 			return err
 		}
 		if !finite(d.above) || !finite(d.below) {
-			levels = 0 // the extrapolation needs levels in a row
+			d.steps = d.steps[:0] // the extrapolation needs levels in a row
 			continue
 		}
+		level := d.central[len(d.steps)*d.m:]
 		for i := range d.m {
-			d.extrapolate(i, levels, (d.above[i]-d.below[i])/(up-down), math.Abs(r[i])/(up-down), &jacobian[i*d.n+j])
+			level[i] = (d.above[i] - d.below[i]) / (up - down)
 		}
-		levels++
+		d.steps = append(d.steps, (up-down)/2)
+	}
+	for i := range d.m {
+		jacobian[i*d.n+j] = d.extrapolate(i)
 	}
 	return nil
 }
 
-// extrapolate adds one level to the tableau of residual i: the error of a
-// central difference is a series in step², so that each order removes a power
-// of four.
-func (d *differences) extrapolate(i, level int, value, noise float64, best *float64) {
-	if level == 0 && math.IsInf(d.change[i], 1) {
-		*best = value
+// extrapolate takes the central differences of residual i to step zero. Their
+// error is a series in step², so that each order removes a power of four. NaN
+// where no two levels could be computed.
+func (d *differences) extrapolate(i int) float64 {
+	levels := len(d.steps)
+	if levels < 2 {
+		return math.NaN()
 	}
-	power := 1.0
-	for order := range level {
-		previous := d.row[order*d.m+i]
-		d.row[order*d.m+i] = value
-		power *= 4
-		next := value + (value-previous)/(power-1)
-		// The rounding of the residuals bounds the error from below, so that
-		// two neighbours that agree by chance do not win.
-		change := max(math.Abs(next-value), math.Abs(next-previous)) + 1e-16*noise
-		if change < d.change[i] {
-			d.change[i], *best = change, next
+	// Over the last, smallest steps the differences change by rounding alone,
+	// which grows with 1/step. Taking part in the estimates, it keeps
+	// neighbours that agree by chance from winning.
+	rounding := 0.0
+	for k := max(levels-4, 1); k < levels; k++ {
+		rounding = max(rounding, math.Abs(d.central[k*d.m+i]-d.central[(k-1)*d.m+i])*d.steps[k])
+	}
+	for k := range levels {
+		value, power := d.central[k*d.m+i], 1.0
+		d.estimate[k], d.doubt[k] = value, math.Inf(1)
+		for order := range k {
+			previous := d.tableau[order]
+			d.tableau[order] = value
+			power *= 4
+			next := value + (value-previous)/(power-1)
+			change := max(math.Abs(next-value), math.Abs(next-previous)) + rounding/d.steps[k]
+			if change < d.doubt[k] {
+				d.doubt[k], d.estimate[k] = change, next
+			}
+			value = next
 		}
-		value = next
+		d.tableau[k] = value
 	}
-	d.row[level*d.m+i] = value
+	// The smallest steps cannot miss how the residual turns, larger ones are
+	// more precise. So go from small to large while they agree: beyond a narrow
+	// line all large steps give the same wrong zero.
+	best := levels - 1
+	for k := levels - 2; k > 0; k-- {
+		if math.Abs(d.estimate[k]-d.estimate[best]) > 10*d.doubt[best] {
+			break
+		}
+		if d.doubt[k] < d.doubt[best] {
+			best = k
+		}
+	}
+	return d.estimate[best]
 }
 
 func finite(list []float64) bool {

@@ -26,7 +26,7 @@ type Settings struct {
 	// Bates, D. G. Watts, Technometrics 23, 179 (1981)). Default: 1e-10.
 	Tolerance float64
 	// Iterations is the largest number of Jacobians that one search computes.
-	// Default: 1000.
+	// Default: 5000.
 	Iterations int
 	// Reach bounds the first step, in units of the scaled length of the start.
 	// Default: 1; larger values trust the first slopes further.
@@ -67,7 +67,7 @@ func (s *Settings) withDefaults(n int) (Settings, error) {
 		return t, fmt.Errorf("fit: Iterations is %d; it must be positive, or 0 for the default", t.Iterations)
 	}
 	if t.Iterations == 0 {
-		t.Iterations = 1000
+		t.Iterations = 5000
 	}
 	if t.Reach == 0 {
 		t.Reach = 1
@@ -221,7 +221,7 @@ func LeastSquares(model Model, size int, start []float64, settings *Settings) (*
 	best := s.answer()
 	searches := 1
 	if set.Restarts > 0 && n > 0 {
-		for again := newRestarts(begin, set); searches <= set.Restarts && best.doubtful(set.SlopeError); searches++ {
+		for again := newRestarts(begin, set); searches <= set.Restarts && best.doubtful(begin, set.SlopeError); searches++ {
 			at, reach := again.next()
 			if err := s.run(at, reach); err != nil {
 				return nil, err
@@ -241,10 +241,11 @@ func LeastSquares(model Model, size int, start []float64, settings *Settings) (*
 }
 
 // doubtful tells that a search should be tried in another way: it did not end
-// at a minimum, or the minimum is a plateau or lies at infinity, where some
-// direction moves nothing. Exact degeneracies look like this too; they cost
-// the restarts.
-func (r *Result) doubtful(slopeError float64) bool {
+// at a minimum, or it ended on a plateau or on the way to infinity, where some
+// direction moves nothing or the whole size of a parameter, now or at the
+// start, less than a millionth of the scatter. Degeneracies that are true look
+// like this too; they cost the restarts.
+func (r *Result) doubtful(begin []float64, slopeError float64) bool {
 	if r.Status == ExactFit {
 		return false
 	}
@@ -252,6 +253,12 @@ func (r *Result) doubtful(slopeError float64) bool {
 		return true
 	}
 	c := newCurvature(r.Jacobian, len(r.Residuals), len(r.Params), r.fixed())
+	for b, j := range c.free {
+		size := max(math.Abs(r.Params[j]), math.Abs(begin[j]))
+		if c.lengths[b]*size < 1e-6*math.Sqrt(r.ReducedChiSquare()) {
+			return true
+		}
+	}
 	return slices.Contains(c.undetermined(max(slopeError, 1e-11)), true)
 }
 

@@ -17,6 +17,7 @@ type linearized struct {
 	rows      int
 	j         []float64 // rows×n
 	r         []float64 // rows
+	lengths   []float64 // of the columns of J
 	scale     []float64 // D
 	low, high []float64 // bounds of the step
 	pinned    []bool    // stands at a bound and would leave it outwards
@@ -45,10 +46,12 @@ func (l *linearized) at(jacobian, r, x, scale []float64, set Settings) {
 	l.factored = nil
 	for j := range x {
 		l.low[j], l.high[j] = set.Lower[j]-x[j], set.Upper[j]-x[j]
-		slope := 0.0
+		slope, length := 0.0, 0.0
 		for i := range l.rows {
 			slope += l.j[i*l.n+j] * l.r[i]
+			length = math.Hypot(length, l.j[i*l.n+j])
 		}
+		l.lengths[j] = length
 		l.pinned[j] = l.low[j] == l.high[j] || l.low[j] == 0 && slope > 0 || l.high[j] == 0 && slope < 0
 	}
 }

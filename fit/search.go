@@ -43,7 +43,8 @@ func newSearch(model Model, m int, begin []float64, set Settings) *search {
 		jacobian: make([]float64, m*n), spareJac: make([]float64, m*n),
 		scale: make([]float64, n),
 		linear: linearized{
-			low: make([]float64, n), high: make([]float64, n),
+			lengths: make([]float64, n),
+			low:     make([]float64, n), high: make([]float64, n),
 			pinned: make([]bool, n),
 		},
 	}
@@ -105,7 +106,7 @@ func (s *search) run(begin []float64, reach float64) error {
 			s.status = Converged
 			return nil
 		}
-		polishing := toMinimum.predicted <= 1e-11*s.chi2
+		polishing := toMinimum.predicted <= 1e-11*s.chi2 || math.Sqrt(toMinimum.predicted) <= 4*s.rounding()
 		if polishing {
 			if s.offset < 0.9*s.best.offset || s.best.x == nil {
 				idle = 0
@@ -194,6 +195,12 @@ func (s *search) stop(rounding bool) error {
 		s.status = ConvergedRounding
 	}
 	return nil
+}
+
+// rounding is about the error of ‖r‖ in double precision, if the model is a sum
+// of terms as large as its parameters times their slopes.
+func (s *search) rounding() float64 {
+	return 0x1p-52 * weightedLength(s.linear.lengths, s.x)
 }
 
 // offsetOf turns the improvement that the linearized problem promises into
