@@ -64,7 +64,11 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 		stop := f.breakAfter(t, lasts)
 		rest := stop - t
 		trial := method
-		if b.possible && (since >= tryAgain || count == 1 && last < rest/4) {
+		wait := tryAgain
+		if progress[method] > 3*progress[1-method] {
+			wait *= 8
+		}
+		if b.possible && (since >= wait || count == 1 && last < rest/4) {
 			trial, since = 1-method, 0
 		}
 		since++

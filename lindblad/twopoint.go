@@ -1,6 +1,9 @@
 package lindblad
 
-import "math"
+import (
+	"math"
+	"unsafe"
+)
 
 // The two-point series (Hermite–Obreshkov, the diagonal Padé scheme for a
 // generator that depends on time). With c_p(t) = x⁽ᵖ⁾(t)/p!,
@@ -188,11 +191,11 @@ func (b *twoPoint) lay() {
 		g := 1 / float64(p+1)
 		for i := 0; i < n; i++ {
 			for e := l.start[i]; e < l.start[i+1]; e++ {
-				b.terms = append(b.terms, rowTerm{int32(p*n*n + int(l.col[e])*n), e, g})
+				b.terms = append(b.terms, rowTerm{int32(p*n + int(l.col[e])), e, g})
 			}
 			for _, d := range b.drives[b.byRow[i]:b.byRow[i+1]] {
 				for q := 1; q <= p; q++ {
-					b.terms = append(b.terms, rowTerm{int32((p-q)*n*n + int(d.col)*n), int32(len(w.vals) + m*int(d.piece) + q - 1), g * d.val})
+					b.terms = append(b.terms, rowTerm{int32((p-q)*n + int(d.col)), int32(len(w.vals) + m*int(d.piece) + q - 1), g * d.val})
 				}
 			}
 			if (len(b.terms)-int(b.rows[len(b.rows)-1]))%2 == 1 {
@@ -235,17 +238,21 @@ func (b *twoPoint) matrices() {
 		copy(b.coef[entries+i*b.m:entries+(i+1)*b.m], d.f[1:])
 	}
 	out := b.mats[n*n:]
+	var nine [][9]float64 // the rows of the matrices
+	if n == 9 {
+		nine = unsafe.Slice((*[9]float64)(b.mats), len(b.mats)/9)
+	}
 	for r, from := range b.rows[:n*b.m] {
 		terms := b.terms[from:b.rows[r+1]]
 		row := out[r*n : r*n+n]
 		if n == 9 {
-			sumRows9((*[9]float64)(row), b.mats, terms, b.coef)
+			sumRows9((*[9]float64)(row), nine, terms, b.coef)
 			continue
 		}
 		clear(row)
 		for _, t := range terms {
 			f := t.factor * b.coef[t.coef]
-			for j, v := range b.mats[t.at:][:len(row)] {
+			for j, v := range b.mats[int(t.at)*n:][:len(row)] {
 				row[j] += f * v
 			}
 		}
@@ -254,11 +261,11 @@ func (b *twoPoint) matrices() {
 
 // sumRows9 adds up terms, two at a time and the columns in two goes, so that
 // the sums stay in registers.
-func sumRows9(row *[9]float64, mats []float64, terms []rowTerm, coef []float64) {
+func sumRows9(row *[9]float64, mats [][9]float64, terms []rowTerm, coef []float64) {
 	var s0, s1, s2, s3, s4 float64
-	for i := 0; i+1 < len(terms); i += 2 {
-		t, u := &terms[i], &terms[i+1]
-		x, y := (*[5]float64)(mats[t.at:]), (*[5]float64)(mats[u.at:])
+	for i := 1; i < len(terms); i += 2 {
+		t, u := &terms[i-1], &terms[i]
+		x, y := &mats[t.at], &mats[u.at]
 		f, g := t.factor*coef[t.coef], u.factor*coef[u.coef]
 		s0 += f*x[0] + g*y[0]
 		s1 += f*x[1] + g*y[1]
@@ -268,14 +275,14 @@ func sumRows9(row *[9]float64, mats []float64, terms []rowTerm, coef []float64) 
 	}
 	row[0], row[1], row[2], row[3], row[4] = s0, s1, s2, s3, s4
 	s0, s1, s2, s3 = 0, 0, 0, 0
-	for i := 0; i+1 < len(terms); i += 2 {
-		t, u := &terms[i], &terms[i+1]
-		x, y := (*[4]float64)(mats[t.at+5:]), (*[4]float64)(mats[u.at+5:])
+	for i := 1; i < len(terms); i += 2 {
+		t, u := &terms[i-1], &terms[i]
+		x, y := &mats[t.at], &mats[u.at]
 		f, g := t.factor*coef[t.coef], u.factor*coef[u.coef]
-		s0 += f*x[0] + g*y[0]
-		s1 += f*x[1] + g*y[1]
-		s2 += f*x[2] + g*y[2]
-		s3 += f*x[3] + g*y[3]
+		s0 += f*x[5] + g*y[5]
+		s1 += f*x[6] + g*y[6]
+		s2 += f*x[7] + g*y[7]
+		s3 += f*x[8] + g*y[8]
 	}
 	row[5], row[6], row[7], row[8] = s0, s1, s2, s3
 }
