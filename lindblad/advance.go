@@ -19,11 +19,11 @@ type slots struct {
 // advance carries the state through a constant stretch for a duration (1 for
 // an ideal rotation).
 func (s *Solver) advance(i int, duration float64) error {
-	if !s.dense(&s.stretches[i]) {
+	if s.methods[i] == bySeries { // a rotation in no time
 		c := s.stretches[i]
 		c.Ideal = false
 		c.Lasts = duration
-		accuracy := 0.1 * s.accuracy
+		accuracy := 0.1 * s.accuracy / s.plays[i]
 		s.watch += accuracy
 		f := field{&c, s.theta, s.dtheta}
 		return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, duration, accuracy, &s.stats, func(float64, float64, within) error { return nil })

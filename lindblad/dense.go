@@ -11,16 +11,42 @@ type full struct {
 	n, m, k int
 	a       []float64
 	lo, hi  []int32
-	sums    []float64 // scratch space
+	limit   *intervals // what any propagator of the layout can fill
+	sums    []float64  // scratch space
+}
+
+// intervals are columns of blocks of four rows.
+type intervals struct{ lo, hi []int32 }
+
+// elements counts what the intervals hold.
+func (v *intervals) elements() (sum float64) {
+	for i, lo := range v.lo {
+		sum += 4 * float64(v.hi[i]-lo)
+	}
+	return sum
+}
+
+// multiplications counts those of a product of two such matrices.
+func (v *intervals) multiplications() (sum float64) {
+	for i, lo := range v.lo {
+		for k := lo / 4; k < v.hi[i]/4; k++ {
+			if w := min(v.hi[i], v.hi[k]) - max(lo, v.lo[k]); w > 0 {
+				sum += 16 * float64(w)
+			}
+		}
+	}
+	return sum
 }
 
 // smallest is the size up to which written-out products without intervals and
 // padding are used.
 const smallest = 9
 
-func (x *full) reset(n, k int) {
+func (x *full) reset(l *Layout, k int) {
+	n := l.n
 	m := padded(n)
 	x.n, x.m, x.k = n, m, k
+	x.limit = &l.closure
 	x.a = sized(x.a, (1+k)*m*m)
 	x.lo, x.hi = sized(x.lo, (m+3)/4), sized(x.hi, (m+3)/4)
 }
@@ -69,7 +95,9 @@ func (x *full) put(l *Layout, q int, vals []float64, f float64) {
 
 // copyFrom makes x equal to y.
 func (x *full) copyFrom(y *full) {
-	x.reset(y.n, y.k)
+	x.n, x.m, x.k, x.limit = y.n, y.m, y.k, y.limit
+	x.a = sized(x.a, len(y.a))
+	x.lo, x.hi = sized(x.lo, len(y.lo)), sized(x.hi, len(y.hi))
 	copy(x.a, y.a)
 	copy(x.lo, y.lo)
 	copy(x.hi, y.hi)
@@ -83,6 +111,7 @@ func (c *full) multiply(a, b *full) {
 			for k := a.lo[i] / 4; k < a.hi[i]/4; k++ {
 				lo, hi = min(lo, b.lo[k]), max(hi, b.hi[k])
 			}
+			lo, hi = max(lo, c.limit.lo[i]), min(hi, c.limit.hi[i])
 			if hi <= lo {
 				lo, hi = 0, 0
 			}
@@ -157,9 +186,10 @@ func (c *full) productBlocks(a, b *full, x, y, z []float64) {
 	m := c.m
 	for i := 0; i < m; i += 2 {
 		from, to := int(a.lo[i/4]), int(a.hi[i/4])
+		least, most := int(c.lo[i/4]), int(c.hi[i/4])
 		x0, x1 := x[i*m:i*m+m], x[(i+1)*m:(i+1)*m+m]
 		for k := from; k < to; k += 4 {
-			lo, hi := int(b.lo[k/4]), int(b.hi[k/4])
+			lo, hi := max(int(b.lo[k/4]), least), min(int(b.hi[k/4]), most)
 			if lo >= hi {
 				continue
 			}

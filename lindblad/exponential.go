@@ -30,7 +30,7 @@ type exponential struct {
 // reset prepares w.a for a generator and k derivatives; put them there.
 func (w *exponential) reset(l *Layout, k int) {
 	for _, m := range []*full{&w.a, &w.a2, &w.a3, &w.a4, &w.y, &w.z} {
-		m.reset(l.n, k)
+		m.reset(l, k)
 	}
 	w.a.likeLayout(l)
 }

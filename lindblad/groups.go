@@ -73,7 +73,7 @@ func (s *Solver) measure(order []Node, times int, g *groupMap) {
 			continue
 		}
 		st := &s.stretches[n.Stretch]
-		g.exact = g.exact && s.dense(st)
+		g.exact = g.exact && s.methods[n.Stretch] == byPropagator
 		g.plays += times
 		if !st.Ideal {
 			g.lasts += float64(times) * st.Lasts
@@ -137,7 +137,7 @@ func (s *Solver) stretchMap(i int) *full {
 	}
 	p := s.propagator(i, duration)
 	m := new(full)
-	m.reset(s.l.n, s.k)
+	m.reset(s.l, s.k)
 	clear(m.a)
 	copy(m.lo, p.q.lo)
 	copy(m.hi, p.q.hi)
@@ -150,11 +150,11 @@ func (s *Solver) stretchMap(i int) *full {
 	}
 	// ∂P/∂lasts = L + LQ
 	var l, lq full
-	l.reset(s.l.n, 0)
+	l.reset(s.l, 0)
 	l.likeLayout(s.l)
 	s.l.generator(s.needVals(), st.Coef)
 	l.put(s.l, 0, s.vals, 1)
-	lq.reset(s.l.n, 0)
+	lq.reset(s.l, 0)
 	clear(lq.a)
 	p.q.k = 0
 	lq.multiply(&l, &p.q)
@@ -178,7 +178,7 @@ func (s *Solver) chain(a, b *full) *full {
 		return a
 	}
 	c := new(full)
-	c.reset(s.l.n, s.k)
+	c.reset(s.l, s.k)
 	clear(c.a)
 	c.multiply(a, b)
 	c.addTo(a, 1)

@@ -59,7 +59,8 @@ type Layout struct {
 	col    []int32
 	pieces []placed
 
-	made uint64 // counts Set
+	closure intervals // of the propagators
+	made    uint64    // counts Set
 
 	builder
 }
@@ -206,6 +207,48 @@ func (l *Layout) place(pieces, counters int) {
 	}
 	for i := 0; i < l.n; i++ {
 		l.start[i+1] += l.start[i]
+	}
+	if l.n > smallest {
+		l.close()
+	}
+}
+
+// close finds the intervals that any propagator fits in: a row reaches from
+// the first coordinate that feeds it, however indirectly, to the last one of
+// its component.
+func (l *Layout) close() {
+	blocks := padded(l.n) / 4
+	l.closure.lo, l.closure.hi = sized(l.closure.lo, blocks), sized(l.closure.hi, blocks)
+	for b := range l.closure.lo {
+		l.closure.lo[b], l.closure.hi[b] = int32(padded(l.n)), 0
+	}
+	o := &l.ordering
+	component := func(i int) int32 { // counters are components of their own
+		if i >= l.reach || l.reach <= smallest {
+			return int32(-1 - i)
+		}
+		return o.component[o.order[i]]
+	}
+	lows := make([]int32, l.n)
+	for i := 0; i < l.n; {
+		j, low := i, int32(i)
+		for ; j < l.n && component(j) == component(i); j++ {
+			for _, c := range l.col[l.start[j]:l.start[j+1]] {
+				if int(c) < i {
+					low = min(low, lows[c])
+				}
+			}
+		}
+		high := int32(j)
+		if l.reach <= smallest { // not ordered
+			low, high = 0, int32(l.n)
+		}
+		for ; i < j; i++ {
+			lows[i] = low
+			b := i / 4
+			l.closure.lo[b] = min(l.closure.lo[b], low&^3)
+			l.closure.hi[b] = max(l.closure.hi[b], (high+3)&^3)
+		}
 	}
 }
 

@@ -174,7 +174,7 @@ func (s *Solver) layCells(st *Stretch, from, length float64, cells int) error {
 			return err
 		}
 		cell := &w.cells[j]
-		cell.reset(n, 0)
+		cell.reset(s.l, 0)
 		clear(cell.a)
 		for b := range cell.lo {
 			cell.lo[b], cell.hi[b] = 0, int32(cell.m)

@@ -42,6 +42,8 @@ type Solver struct {
 	vals    []float64
 	key     []float64
 	slots   []slots
+	methods []method
+	plays   []float64
 	ring    [8][4]float64
 	squares [3][16]float64
 	exp     exponential
@@ -203,6 +205,7 @@ func (s *Solver) begin(ctx context.Context, x0 []float64, dx0 [][]float64, stret
 	s.played = 0
 	s.trace = l.trace(x0)
 	s.watch = math.Inf(1)
+	s.choose(order)
 	s.startClock(order)
 	return nil
 }
@@ -223,7 +226,7 @@ func (s *Solver) total(order []Node, times float64, sum *float64, slopes []float
 		for j := range st.Slopes {
 			slopes[j] += times * st.Slopes[j].Lasts
 		}
-		if !s.dense(st) {
+		if s.methods[n.Stretch] == bySeries {
 			shaped += times * st.Lasts
 		}
 	}
@@ -333,12 +336,6 @@ func (s *Solver) playAll(order []Node) error {
 	return nil
 }
 
-// dense tells whether a stretch is carried by dense propagators.
-func (s *Solver) dense(st *Stretch) bool { return len(st.Terms) == 0 && s.l.n <= denseLimit }
-
-// denseLimit is the largest state with dense propagators.
-const denseLimit = 200
-
 func (s *Solver) playStretch(i int) error {
 	if s.played++; s.played%256 == 0 && s.ctx.Err() != nil {
 		return s.ctx.Err()
@@ -368,7 +365,7 @@ func (s *Solver) playStretch(i int) error {
 		s.l.generator(s.needVals(), st.Coef)
 		s.slideEnd(st)
 		s.pass(st)
-	case s.dense(st):
+	case s.methods[i] == byPropagator:
 		err = s.playConstant(i)
 	default:
 		err = s.playShaped(i)
@@ -408,7 +405,7 @@ func (s *Solver) playConstant(i int) error {
 		if err := s.handDuring(st); err != nil {
 			return err
 		}
-		if c.next < last && c.times == nil && s.dense(st) && !s.sliding() {
+		if c.next < last && c.times == nil && !s.sliding() {
 			if err := s.stride(i, last); err != nil {
 				return err
 			}

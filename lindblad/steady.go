@@ -114,7 +114,7 @@ func (s *Solver) orderMap(m *full, order []Node) (*full, error) {
 		if node.Group == nil {
 			st := &s.stretches[node.Stretch]
 			switch {
-			case st.Ideal || s.dense(st):
+			case len(st.Terms) == 0 && s.l.n <= denseLimit:
 				m = s.chain(s.stretchMap(node.Stretch), m)
 			case s.k > 0:
 				return nil, errors.New("lindblad: slopes of a steady state with shaped stretches are not available")
