@@ -92,77 +92,133 @@ func (l *linearized) compress(jacobian, r []float64) {
 
 // step solves within ‖Dp‖ ≤ radius and the bounds.
 func (l *linearized) step(radius float64) proposal {
-	fixed := slices.Clone(l.pinned)
+	lambda := 0.0
 	p := make([]float64, l.n)
-	inside := true
-	for {
-		rest, left := slices.Clone(l.r), radius
-		taken := 0.0
-		for j, f := range fixed {
-			if f {
-				taken = math.Hypot(taken, l.scale[j]*p[j])
-				for i := range rest {
-					rest[i] += l.j[i*l.n+j] * p[j]
-				}
-			}
-		}
-		if !math.IsInf(radius, 1) {
-			left = math.Sqrt(max(radius*radius-taken*taken, 0))
-		}
-		inside = l.solve(fixed, rest, left, p)
-		past := l.past(fixed, p)
-		if len(past) == 0 {
+	l.factor(l.pinned)
+	g := l.project(l.r)
+	if !math.IsInf(radius, 1) {
+		lambda = l.damping(g, radius)
+	}
+	l.solve(g, lambda, p)
+	for j, v := range p {
+		if v < l.low[j] || v > l.high[j] {
+			p, lambda = l.bounded(radius, lambda)
 			break
 		}
-		for _, j := range past {
-			fixed[j] = true
-			p[j] = min(max(p[j], l.low[j]), l.high[j])
-		}
 	}
-	made := proposal{p: p, predicted: l.promise(p), inside: inside}
-	if made.predicted > 0 || !slices.Contains(l.unpinned(), true) {
-		return made
-	}
-	// Stopping several parameters at once can lose the descent. The way to the
-	// unbounded minimum never does, up to the first bound on it.
-	clear(p)
-	inside = l.solve(l.pinned, l.r, radius, p)
-	share, first := 1.0, -1
-	for _, j := range l.past(l.pinned, p) {
-		room := l.high[j]
-		if p[j] < 0 {
-			room = l.low[j]
-		}
-		if t := room / p[j]; t < share {
-			share, first = t, j
-		}
-	}
-	for j := range p {
-		p[j] *= share
-	}
-	if first >= 0 {
-		p[first] = min(max(p[first], l.low[first]), l.high[first])
-	}
-	return proposal{p: p, predicted: max(l.promise(p), 0), inside: inside && share == 1}
+	return proposal{p: p, predicted: max(l.promise(p), 0), inside: lambda == 0}
 }
 
-func (l *linearized) unpinned() []bool {
-	free := make([]bool, l.n)
-	for j, pinned := range l.pinned {
-		free[j] = !pinned
+// bounded finds the damping for which the step within the bounds is as long as
+// the radius, from a guess; 0 if that step is shorter anyway.
+func (l *linearized) bounded(radius, guess float64) ([]float64, float64) {
+	p := l.box(0)
+	if weightedLength(l.scale, p) <= 1.1*radius {
+		return p, 0
 	}
-	return free
-}
-
-// past lists the free parameters that p takes over a bound.
-func (l *linearized) past(fixed []bool, p []float64) []int {
-	var list []int
-	for j, v := range p {
-		if !fixed[j] && (v < l.low[j] || v > l.high[j]) {
-			list = append(list, j)
+	// The length falls with the damping.
+	low, high := 0.0, math.Inf(1)
+	lambda := guess
+	if lambda == 0 {
+		lambda = 1 // columns of J D⁻¹ are at most one long
+	}
+	for range 60 {
+		p = l.box(lambda)
+		length := weightedLength(l.scale, p)
+		switch {
+		case length > 1.1*radius:
+			low = lambda
+		case length < 0.8*radius:
+			high = lambda
+		default:
+			return p, lambda
+		}
+		switch {
+		case math.IsInf(high, 1):
+			lambda *= 8
+		case low == 0:
+			lambda /= 8
+		default:
+			lambda = math.Sqrt(low * high)
 		}
 	}
-	return list
+	return p, lambda
+}
+
+// box minimizes ‖r + Jp‖² + λ‖Dp‖² within the bounds: from p = 0 towards the
+// minimum of the free parameters, as far as the first bound, where that one
+// stays; when the minimum is reached, the one that wants to leave its bound
+// most is freed again (P. B. Stark, R. L. Parker, Comput. Stat. 10, 129 (1995)).
+func (l *linearized) box(lambda float64) []float64 {
+	fixed := slices.Clone(l.pinned)
+	p, q := make([]float64, l.n), make([]float64, l.n)
+	rest := make([]float64, l.rows)
+	for range 10 * (l.n + 1) { // each round lowers the sum; this many never occur
+		for {
+			copy(rest, l.r)
+			for j, f := range fixed {
+				q[j] = p[j]
+				for i := range rest {
+					if f {
+						rest[i] += l.j[i*l.n+j] * p[j]
+					}
+				}
+			}
+			l.factor(fixed)
+			l.solve(l.project(rest), lambda, q)
+			share, first := 1.0, -1
+			for j := range q {
+				bound := l.high[j]
+				if q[j] < p[j] {
+					bound = l.low[j]
+				}
+				if fixed[j] || q[j] >= l.low[j] && q[j] <= l.high[j] {
+					continue
+				}
+				if t := (bound - p[j]) / (q[j] - p[j]); t < share {
+					share, first = max(t, 0), j
+				}
+			}
+			for j := range p {
+				p[j] += share * (q[j] - p[j])
+			}
+			if first < 0 {
+				break
+			}
+			fixed[first] = true
+			p[first] = l.low[first]
+			if q[first] > l.high[first] {
+				p[first] = l.high[first]
+			}
+		}
+		copy(rest, l.r)
+		for i := range rest {
+			for j, v := range p {
+				rest[i] += l.j[i*l.n+j] * v
+			}
+		}
+		leave, most := -1, 1e-14*math.Sqrt(sumOfSquares(rest))
+		for j, f := range fixed {
+			if !f || l.low[j] == l.high[j] {
+				continue
+			}
+			slope := lambda * l.scale[j] * p[j]
+			for i := range rest {
+				slope += l.j[i*l.n+j] / l.scale[j] * rest[i]
+			}
+			if p[j] == l.high[j] {
+				slope = -slope
+			}
+			if -slope > most {
+				leave, most = j, -slope
+			}
+		}
+		if leave < 0 {
+			break
+		}
+		fixed[leave] = false
+	}
+	return p
 }
 
 // promise is ‖r‖² − ‖r + Jp‖², as −(Jp)·(2r + Jp) so that small ones survive.
@@ -178,21 +234,20 @@ func (l *linearized) promise(p []float64) float64 {
 	return sum
 }
 
-// solve sets the free components of p to the minimum of ‖rest + Jp‖ within
-// ‖Dp‖ ≤ radius and tells whether the radius let it stand.
-func (l *linearized) solve(fixed []bool, rest []float64, radius float64, p []float64) bool {
-	l.factor(fixed)
-	k := len(l.free)
-	if k == 0 {
-		return true
-	}
-	g := make([]float64, len(l.values)) // Uᵀ rest
+// project gives the parts of rest along the left singular vectors.
+func (l *linearized) project(rest []float64) []float64 {
+	g := make([]float64, len(l.values))
 	for c := range g {
 		for i := range l.rows {
 			g[c] += l.u.At(i, c) * rest[i]
 		}
 	}
-	lambda := l.damping(g, radius)
+	return g
+}
+
+// solve sets the free components of p to the minimum of
+// ‖rest + Jp‖² + λ‖Dp‖², g the projection of rest.
+func (l *linearized) solve(g []float64, lambda float64, p []float64) {
 	for a, j := range l.free {
 		q := 0.0
 		for c, s := range l.values {
@@ -200,7 +255,6 @@ func (l *linearized) solve(fixed []bool, rest []float64, radius float64, p []flo
 		}
 		p[j] = q / l.scale[j]
 	}
-	return lambda == 0
 }
 
 func (l *linearized) factor(fixed []bool) {

@@ -142,7 +142,7 @@ func (s *search) run(begin []float64, reach float64) error {
 				s.trial[j] = min(max(s.x[j]+step.p[j], s.set.Lower[j]), s.set.Upper[j])
 			}
 			if slices.Equal(s.trial, s.x) {
-				return s.stop(polishing)
+				return s.stop(polishing || s.stationary())
 			}
 			if !polishing {
 				finite, err = s.evaluate(s.trial, s.trialR, nil)
@@ -156,7 +156,7 @@ func (s *search) run(begin []float64, reach float64) error {
 				radius = nextRadius(radius, length, ratio, step.inside)
 				if ratio < 1e-4 || math.IsNaN(ratio) {
 					if radius <= 1e-16*weightedLength(s.scale, s.x) || radius < 1e-290 {
-						return s.stop(s.offset < 1e-4)
+						return s.stop(s.offset < 1e-4 || s.stationary())
 					}
 					continue
 				}
@@ -171,7 +171,7 @@ func (s *search) run(begin []float64, reach float64) error {
 				}
 				radius = 0.1 * length
 				if radius <= 1e-16*weightedLength(s.scale, s.x) {
-					return s.stop(false)
+					return s.stop(s.stationary())
 				}
 				continue
 			}
@@ -201,6 +201,27 @@ func (s *search) stop(rounding bool) error {
 // of terms as large as its parameters times their slopes.
 func (s *search) rounding() float64 {
 	return 0x1p-52 * weightedLength(s.linear.lengths, s.x)
+}
+
+// stationary tells that the residuals are at right angles to all columns of the
+// Jacobian within the root of the rounding error, about as flat as χ² can show.
+// Where two columns are nearly equal this holds at minima whose offset is large.
+func (s *search) stationary() bool {
+	l := &s.linear
+	length := math.Sqrt(s.chi2)
+	for j, pinned := range l.pinned {
+		if pinned {
+			continue
+		}
+		slope := 0.0
+		for i := range l.rows {
+			slope += l.j[i*l.n+j] * l.r[i]
+		}
+		if math.Abs(slope) > 1e-7*l.lengths[j]*length {
+			return false
+		}
+	}
+	return true
 }
 
 // offsetOf turns the improvement that the linearized problem promises into
