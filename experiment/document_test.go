@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 	"testing"
 
@@ -269,18 +270,17 @@ func FuzzDocument(f *testing.F) {
 			require.True(t, reference != nil || ours, "%q is refused: %v", text, err)
 			return
 		}
-		if reference != nil {
-			// Numbers out of range and impossible dates are no matter of the tree.
-			for _, s := range []string{"too large", "out of range", "date", "time", "day", "month", "hour", "minute", "second", "year", "zone", "digits", "fit in"} {
-				if strings.Contains(reference.Error(), s) {
-					return
-				}
-			}
-			require.NoError(t, reference, "%q", text)
+		if reference != nil && (hasDate(root) || strings.Contains(reference.Error(), "too large") || strings.Contains(reference.Error(), "out of range")) {
+			return // sizes of numbers and days of months are no matter of the tree
 		}
+		require.NoError(t, reference, "%q", text)
 		require.Equal(t, decodedNames(decoded), names(root), "%q", text)
 		readAgain(t, text, root)
 	})
+}
+
+func hasDate(n *node) bool {
+	return n.kind == dateNode || slices.ContainsFunc(n.children, hasDate)
 }
 
 // readAgain parses the bytes of every value on their own.
