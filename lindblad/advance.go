@@ -80,12 +80,12 @@ func (s *Solver) propagator(i int, duration float64) *propagator {
 	s.exp.reset(s.l, len(p.directions))
 	vals := s.needVals()
 	s.l.generator(vals, st.Coef)
-	s.exp.a.put(s.l, 0, vals, duration)
+	s.exp.put(s.l, 0, vals, duration)
 	for m, j := range p.directions {
 		s.l.generator(vals, st.Slopes[j].Coef)
-		s.exp.a.put(s.l, 1+m, vals, duration)
+		s.exp.put(s.l, 1+m, vals, duration)
 	}
-	q, squarings, size := s.exp.run(s.l.pops)
+	q, squarings, size := s.exp.run(s.l)
 	s.limited(1e-16 * size)
 	p.q.copyFrom(q)
 	p.worst = rounding(s.l.n, squarings)

@@ -23,23 +23,49 @@ var inverseFactorial = func() (c [17]float64) {
 
 // exponential is the workspace.
 type exponential struct {
+	vals                []float64 // of the generator and its derivatives, on the pattern
 	a, a2, a3, a4, y, z full
 	spare               []int32
 }
 
-// reset prepares w.a for a generator and k derivatives; put them there.
+// reset prepares for a generator and k derivatives, see put.
 func (w *exponential) reset(l *Layout, k int) {
 	for _, m := range []*full{&w.a, &w.a2, &w.a3, &w.a4, &w.y, &w.z} {
 		m.reset(l, k)
 	}
 	w.a.likeLayout(l)
+	w.vals = sized(w.vals, (1+k)*len(l.col))
+}
+
+// put sets part q to a generator on the pattern, times f.
+func (w *exponential) put(l *Layout, q int, vals []float64, f float64) {
+	w.a.put(l, q, vals, f)
+	out := w.vals[q*len(l.col):][:len(vals)]
+	for i, v := range vals {
+		out[i] = f * v
+	}
+}
+
+// leftTimes sets c = a·b for the generator a.
+func (w *exponential) leftTimes(l *Layout, c, b *full) {
+	if c.n <= smallest {
+		c.multiply(&w.a, b)
+		return
+	}
+	c.timesPattern(l, w.vals, b)
+}
+
+func scale(x []float64, f float64) {
+	for i := range x {
+		x[i] *= f
+	}
 }
 
 // run returns Q with derivatives for the matrix w.a, how many squarings it took
 // and the size of the matrix. The result is overwritten by the next run.
-func (w *exponential) run(pops []int32) (q *full, squarings int, size float64) {
-	w.a2.multiply(&w.a, &w.a)
-	w.a3.multiply(&w.a2, &w.a)
+func (w *exponential) run(l *Layout) (q *full, squarings int, size float64) {
+	w.leftTimes(l, &w.a2, &w.a)
+	w.leftTimes(l, &w.a3, &w.a2)
 	size = math.Min(w.a.norm(), math.Max(math.Sqrt(w.a2.norm()), math.Cbrt(w.a3.norm())))
 	s := 0
 	if size > radius {
@@ -48,10 +74,12 @@ func (w *exponential) run(pops []int32) (q *full, squarings int, size float64) {
 	if s > 0 {
 		f := math.Ldexp(1, -s)
 		w.a.scale(f)
+		scale(w.vals, f)
 		w.a2.scale(f * f)
 		w.a3.scale(f * f * f)
 	}
-	w.a4.multiply(&w.a2, &w.a2)
+	w.leftTimes(l, &w.a4, &w.a3)
+	pops := l.pops
 	c := &inverseFactorial
 	y, z := &w.y, &w.z
 	y.lo, y.hi = append(y.lo[:0], w.a4.lo...), append(y.hi[:0], w.a4.hi...)

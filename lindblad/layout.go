@@ -57,6 +57,7 @@ type Layout struct {
 
 	start  []int32 // the pattern by rows: entries start[i] … start[i+1]−1 of row i
 	col    []int32
+	rows   [longRow + 1][]int32 // rows by their number of entries; the last: longer ones
 	pieces []placed
 
 	closure intervals // of the propagators
@@ -208,6 +209,13 @@ func (l *Layout) place(pieces, counters int) {
 	for i := 0; i < l.n; i++ {
 		l.start[i+1] += l.start[i]
 	}
+	for k := range l.rows {
+		l.rows[k] = l.rows[k][:0]
+	}
+	for i := 0; i < l.n; i++ {
+		k := min(int(l.start[i+1]-l.start[i]), longRow)
+		l.rows[k] = append(l.rows[k], int32(i))
+	}
 	if l.n > smallest {
 		l.close()
 	}
@@ -301,20 +309,5 @@ func (l *Layout) generator(vals, coef []float64) {
 				vals[at] += c * p.val[i]
 			}
 		}
-	}
-}
-
-// times sets y = Lx for a generator on the pattern.
-func (l *Layout) times(y, vals, x []float64) {
-	from := l.start[0]
-	for i, to := range l.start[1 : l.n+1] {
-		v := vals[from:to]
-		col := l.col[from:to][:len(v)]
-		var s float64
-		for e, a := range v {
-			s += a * x[col[e]]
-		}
-		y[i] = s
-		from = to
 	}
 }

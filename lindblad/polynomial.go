@@ -18,13 +18,21 @@ func (p *polynomial) part(i, q, n int) []float64 {
 	return p.c[i*p.block+q*n:][:n]
 }
 
-// at evaluates the polynomial at τ.
+// at evaluates the polynomial at τ, two orders at a time.
 func (p *polynomial) at(y []float64, tau float64) {
 	u := tau / p.scale
-	y = y[:p.block]
-	copy(y, p.c[p.order*p.block:])
-	for i := p.order - 1; i >= 0; i-- {
-		c := p.c[i*p.block:][:len(y)]
+	n := p.block
+	y = y[:n]
+	i := p.order
+	copy(y, p.c[i*n:])
+	for ; i >= 2; i -= 2 {
+		a, b := p.c[(i-1)*n:][:len(y)], p.c[(i-2)*n:][:len(y)]
+		for j, v := range y {
+			y[j] = (v*u+a[j])*u + b[j]
+		}
+	}
+	if i == 1 {
+		c := p.c[:len(y)]
 		for j, v := range c {
 			y[j] = y[j]*u + v
 		}

@@ -423,17 +423,6 @@ func (d *driven) add(y, x []float64, f float64) {
 	}
 }
 
-// addTimes sets y += Lx.
-func (l *Layout) addTimes(y, vals, x []float64) {
-	for i := 0; i < l.n; i++ {
-		var s float64
-		for e := l.start[i]; e < l.start[i+1]; e++ {
-			s += vals[e] * x[l.col[e]]
-		}
-		y[i] += s
-	}
-}
-
 func (l *Layout) trace(x []float64) float64 {
 	var s float64
 	for _, p := range l.pops {
@@ -444,6 +433,10 @@ func (l *Layout) trace(x []float64) float64 {
 
 // setTrace takes back what rounding did to the sum of the populations.
 func (l *Layout) setTrace(x []float64, trace float64) {
+	off := l.trace(x) - trace
+	if math.Abs(off) <= 2e-16 {
+		return
+	}
 	var most float64
 	at := -1
 	for _, p := range l.pops {
@@ -452,6 +445,6 @@ func (l *Layout) setTrace(x []float64, trace float64) {
 		}
 	}
 	if at >= 0 {
-		x[at] -= l.trace(x) - trace
+		x[at] -= off
 	}
 }
