@@ -87,6 +87,9 @@ func shortest(v float64, d Dimension, si string, others ...string) string {
 			if err != nil {
 				break
 			}
+			if math.Abs(x*size-v) > 1e-15*math.Abs(v) {
+				continue // too far off to be worth an exact product
+			}
 			text := shifted(x, 0) + " " + name
 			if len(text) > len(best) {
 				break
