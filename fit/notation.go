@@ -46,8 +46,10 @@ func Notation(value, err float64) string {
 // power of ten of the last.
 func roundError(err float64) (digits string, last int) {
 	text := strconv.FormatFloat(err, 'e', 0, 64) // "d e±xx"
-	if two := strconv.FormatFloat(err, 'e', 1, 64); two[0] == '1' || text[0] == '1' {
+	if two := strconv.FormatFloat(err, 'e', 1, 64); two[0] == '1' {
 		text = two
+	} else if text[0] == '1' { // 0.96 rounds to 1.0
+		text = "1.0" + text[1:]
 	}
 	mantissa, exponent, _ := strings.Cut(text, "e")
 	last, _ = strconv.Atoi(exponent)

@@ -65,12 +65,9 @@ func Peaks(x, y, sigma []float64, count int) []Peak {
 	}
 	slices.SortStableFunc(found, func(a, b Peak) int { return cmp.Compare(b.Power, a.Power) })
 	found = found[:min(count, len(found))]
-	independent := grid[len(grid)-1] * (x[len(x)-1] - x[0])
 	for i := range found {
 		found[i] = d.refine(found[i].Frequency, grid)
-		// Zechmeister and Kürster (2009), equations 22 and 24.
-		one := math.Pow(1-found[i].Power, float64(len(x)-3)/2)
-		found[i].FalseAlarm = -math.Expm1(max(independent, 1) * math.Log1p(-one))
+		found[i].FalseAlarm = d.falseAlarm(found[i].Power, grid[len(grid)-1])
 	}
 	slices.SortStableFunc(found, func(a, b Peak) int { return cmp.Compare(b.Power, a.Power) })
 	return found
@@ -181,6 +178,26 @@ func (d *sineData) peak(f float64) Peak {
 	// a cos θ + b sin θ = A cos(θ − atan2(b, a)), θ counted from the first x.
 	p.Phase = math.Remainder(-math.Atan2(b, a)-2*math.Pi*f*d.x[0], 2*math.Pi)
 	return p
+}
+
+// falseAlarm is the probability that white noise has a peak of this power below
+// the frequency top: R. V. Baluev, Mon. Not. R. Astron. Soc. 385, 1279 (2008),
+// equations 5 and 6 with table 1, a sine with free offset against a constant.
+func (d *sineData) falseAlarm(power, top float64) float64 {
+	n := float64(len(d.x))
+	mean, square := 0.0, 0.0
+	for i, x := range d.x {
+		mean += d.w[i] * (x - d.x[0])
+		square += d.w[i] * (x - d.x[0]) * (x - d.x[0])
+	}
+	a, _ := math.Lgamma((n - 1) / 2)
+	b, _ := math.Lgamma((n - 2) / 2)
+	crossings := math.Sqrt(2/(n-1)) * math.Exp(a-b) * // of order 1
+		top * math.Sqrt(4*math.Pi*max(square-mean*mean, 0)) *
+		math.Pow(1-power, (n-4)/2) * math.Sqrt((n-1)*power/2)
+	single := math.Pow(1-power, (n-3)/2)
+	// 1 − (1 − single) e^{−crossings}, also where it is tiny.
+	return single - (1-single)*math.Expm1(-crossings)
 }
 
 func (d *sineData) solve(c, s, cc, cs, yc, ys float64) (a, b, power float64) {

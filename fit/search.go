@@ -17,6 +17,7 @@ type search struct {
 	r, trialR          []float64
 	jacobian, spareJac []float64
 	scale              []float64 // D
+	squares            []float64
 	chi2, offset       float64
 	iterations         int
 	status             Status
@@ -41,7 +42,7 @@ func newSearch(model Model, m int, begin []float64, set Settings) *search {
 		x: make([]float64, n), trial: make([]float64, n),
 		r: make([]float64, m), trialR: make([]float64, m),
 		jacobian: make([]float64, m*n), spareJac: make([]float64, m*n),
-		scale: make([]float64, n),
+		scale: make([]float64, n), squares: make([]float64, n),
 		linear: linearized{
 			lengths: make([]float64, n),
 			low:     make([]float64, n), high: make([]float64, n),
@@ -261,12 +262,14 @@ func (s *search) reduction() float64 {
 
 // rescale lets D grow to the column lengths of the Jacobian.
 func (s *search) rescale() {
-	for j := range s.scale {
-		length := 0.0
-		for i := range s.m {
-			length = math.Hypot(length, s.jacobian[i*s.n+j])
+	clear(s.squares)
+	for i := range s.m {
+		for j, v := range s.jacobian[i*s.n : i*s.n+s.n] {
+			s.squares[j] += v * v
 		}
-		s.scale[j] = max(s.scale[j], length)
+	}
+	for j, square := range s.squares {
+		s.scale[j] = max(s.scale[j], math.Sqrt(square))
 	}
 	for j, d := range s.scale {
 		if d == 0 {
