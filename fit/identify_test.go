@@ -101,3 +101,13 @@ func TestTooFewPoints(t *testing.T) {
 	assert.True(t, math.IsNaN(res.ReducedChiSquare()))
 	assert.True(t, math.IsInf(res.StandardErrors()[0], 1))
 }
+
+// Nothing to fit: the residuals as they are.
+func TestNoParameters(t *testing.T) {
+	c := Curve{X: []float64{1, 2}, Y: []float64{1, 2}, F: func(x float64, p []float64) float64 { return 0 }}
+	res, err := c.Fit(nil, nil)
+	require.NoError(t, err)
+	assert.Equal(t, 5.0, res.ChiSquare)
+	assert.Equal(t, 2, res.DegreesOfFreedom)
+	assert.Empty(t, res.Covariance)
+}

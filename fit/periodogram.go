@@ -85,14 +85,16 @@ func frequencyGrid(x []float64, averaged bool) []float64 {
 		return nil
 	}
 	nyquist := float64(len(x)-1) / (2 * window)
-	top := 10 * nyquist
-	if averaged {
-		top = nyquist / 2
-	} else if step := commonStep(x); step > 0 {
-		top = min(1/(2*step), top)
+	top := nyquist / 2
+	if !averaged {
+		if step := commonStep(x); step > 0 {
+			top = 1 / (2 * step)
+		} else {
+			top = max(10*nyquist, 1/(2*medianGap(x)))
+		}
 	}
 	// At most 10⁸ sines, some tenths of a second.
-	points := min(int(top*window*gridPerCycle+1e-6), 100_000_000/len(x))
+	points := int(min(top*window*gridPerCycle+1e-6, float64(100_000_000/len(x))))
 	var grid []float64
 	for k := gridPerCycle / 2; k <= points; k++ {
 		grid = append(grid, float64(k)/(gridPerCycle*window))
@@ -100,8 +102,20 @@ func frequencyGrid(x []float64, averaged bool) []float64 {
 	return grid
 }
 
+// medianGap is the median of the distances of sorted x that are not zero.
+func medianGap(x []float64) float64 {
+	var gaps []float64
+	for i := 1; i < len(x); i++ {
+		if x[i] > x[i-1] {
+			gaps = append(gaps, x[i]-x[i-1])
+		}
+	}
+	slices.Sort(gaps)
+	return gaps[len(gaps)/2]
+}
+
 // commonStep is the step that all distances of sorted x are multiples of,
-// within a hundredth of it, or 0.
+// within three hundredths of it, or 0.
 func commonStep(x []float64) float64 {
 	smallest := math.Inf(1)
 	for i := 1; i < len(x); i++ {
@@ -114,7 +128,7 @@ func commonStep(x []float64) float64 {
 		step, fits := smallest/parts, true
 		for i := 1; i < len(x) && fits; i++ {
 			n := (x[i] - x[i-1]) / step
-			fits = math.Abs(n-math.Round(n)) <= 0.01
+			fits = math.Abs(n-math.Round(n)) <= 0.03
 		}
 		if fits {
 			return step

@@ -42,12 +42,14 @@ func TestPeaks(t *testing.T) {
 		}
 		return y
 	}
-	var even, jittered, grid, late []float64
+	var even, jittered, grid, late, rounded, bursts []float64
 	rng := rand.New(rand.NewPCG(9, 1))
 	for i := range 101 {
 		even = append(even, float64(i)*0.1)
 		jittered = append(jittered, float64(i)*0.1+0.1*rng.Float64())
 		late = append(late, 1e4+float64(i)*0.1)
+		rounded = append(rounded, math.Round(float64(i)*79.7)/797)
+		bursts = append(bursts, float64(i/10)*1.09+float64(i%10)*0.005)
 		if i%3 != 1 && (i < 40 || i > 60) {
 			grid = append(grid, float64(i)*0.1)
 		}
@@ -59,6 +61,8 @@ func TestPeaks(t *testing.T) {
 	}{
 		{"even", even, 1.2345}, {"gaps on a grid", grid, 4.321}, {"far from zero", late, 0.777},
 		{"just below Nyquist", even, 4.93}, {"under one cycle", even, 0.07},
+		{"times rounded to an eightieth of the step", rounded, 2.94},
+		{"bursts", bursts, 69.2},
 		{"beyond the mean Nyquist frequency of 5", jittered, 21.7},
 	} {
 		found := Peaks(c.x, sine(c.x, c.f), nil, 3)

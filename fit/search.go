@@ -32,7 +32,6 @@ type search struct {
 type snapshot struct {
 	x, r, jacobian []float64
 	chi2, offset   float64
-	atBound        []int
 }
 
 func newSearch(model Model, m int, begin []float64, set Settings) *search {
@@ -94,7 +93,7 @@ func (s *search) run(begin []float64, reach float64) error {
 	// Once a step changes χ² by less than its rounding, χ² cannot judge steps
 	// any more, but the gradient still can: Gauss–Newton steps go on while
 	// they bring the minimum nearer.
-	idle := 0
+	idle, mark := 0, math.Inf(1)
 	for s.iterations = 1; ; s.iterations++ {
 		s.linear.at(s.jacobian, s.r, s.x, s.scale, s.set)
 		toMinimum := s.linear.step(math.Inf(1))
@@ -109,15 +108,15 @@ func (s *search) run(begin []float64, reach float64) error {
 		}
 		polishing := toMinimum.predicted <= 1e-11*s.chi2 || math.Sqrt(toMinimum.predicted) <= 4*s.rounding()
 		if polishing {
-			if s.offset < 0.9*s.best.offset || s.best.x == nil {
-				idle = 0
+			if s.offset < 0.9*mark {
+				idle, mark = 0, s.offset
 			} else {
 				idle++
 			}
-			if s.best.x == nil || s.offset < s.best.offset {
+			if s.best.x == nil || s.offset < s.best.offset || s.fellBelowBest() {
 				s.keep()
 			}
-			if idle >= 5 {
+			if idle >= 8 {
 				s.restore()
 				s.status = ConvergedRounding
 				return nil
@@ -190,9 +189,7 @@ func (s *search) run(begin []float64, reach float64) error {
 func (s *search) stop(rounding bool) error {
 	s.status = Stalled
 	if rounding {
-		if s.best.x != nil {
-			s.restore()
-		}
+		s.restore()
 		s.status = ConvergedRounding
 	}
 	return nil
@@ -286,7 +283,14 @@ func (s *search) keep() {
 	}
 }
 
+// fellBelowBest tells that χ² is lower than in the snapshot by more than
+// rounding, whatever the offsets: the snapshot was a flat place on the way.
+func (s *search) fellBelowBest() bool { return s.chi2 < s.best.chi2*(1-1e-9) }
+
 func (s *search) restore() {
+	if s.best.x == nil || s.fellBelowBest() {
+		return
+	}
 	copy(s.x, s.best.x)
 	copy(s.r, s.best.r)
 	copy(s.jacobian, s.best.jacobian)

@@ -20,7 +20,8 @@ type Oscillation struct {
 // Oscillations returns at most count damped sines that describe y at x, best
 // first: the frequencies are the peaks of the periodogram, refined together
 // with the decay by least squares. sigma may be nil. They are meant as starting
-// values: several come back because the highest peak can be an alias.
+// values: several come back because the highest peak can be an alias or a side
+// peak. Frequencies are at least a fifth of a cycle over the window.
 func Oscillations(x, y, sigma []float64, count int) []Oscillation {
 	x, y, sigma = condense(x, y, sigma, 4000)
 	var found []Oscillation
@@ -33,7 +34,10 @@ func Oscillations(x, y, sigma []float64, count int) []Oscillation {
 				best = o
 			}
 		}
-		if !math.IsInf(best.ChiSquare, 1) {
+		known := slices.ContainsFunc(found, func(o Oscillation) bool {
+			return math.Abs(o.Frequency-best.Frequency) < 0.05/window
+		})
+		if !known && !math.IsInf(best.ChiSquare, 1) {
 			found = append(found, best)
 		}
 	}
@@ -65,7 +69,7 @@ func oscillation(x, y, sigma []float64, peak Peak, rate float64) (Oscillation, b
 	sin, cos := math.Sincos(2*math.Pi*peak.Frequency*zero + peak.Phase)
 	start := []float64{peak.Offset, peak.Amplitude * cos, -peak.Amplitude * sin, peak.Frequency, rate}
 	res, err := c.Fit(start, &Settings{
-		Lower:      []float64{-inf, -inf, -inf, max(peak.Frequency-room, 0), 0},
+		Lower:      []float64{-inf, -inf, -inf, max(peak.Frequency-room, 0.2/window), 0},
 		Upper:      []float64{inf, inf, inf, peak.Frequency + room, 300 / window},
 		Tolerance:  1e-4,
 		Iterations: 30, Restarts: -1, Reach: 100,
