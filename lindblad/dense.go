@@ -246,27 +246,13 @@ func (x *full) times(y []float64, q int, v []float64, add bool) {
 		r1 := a[(i+1)*m+lo:][:len(u)]
 		r2 := a[(i+2)*m+lo:][:len(u)]
 		r3 := a[(i+3)*m+lo:][:len(u)]
-		var s0, s1, s2, s3, t0, t1, t2, t3 float64
-		j := 0
-		for ; j+1 < len(u); j += 2 {
-			w, z := u[j], u[j+1]
-			s0 += r0[j] * w
-			s1 += r1[j] * w
-			s2 += r2[j] * w
-			s3 += r3[j] * w
-			t0 += r0[j+1] * z
-			t1 += r1[j+1] * z
-			t2 += r2[j+1] * z
-			t3 += r3[j+1] * z
-		}
-		if j < len(u) {
-			w := u[j]
+		var s0, s1, s2, s3 float64
+		for j, w := range u {
 			s0 += r0[j] * w
 			s1 += r1[j] * w
 			s2 += r2[j] * w
 			s3 += r3[j] * w
 		}
-		s0, s1, s2, s3 = s0+t0, s1+t1, s2+t2, s3+t3
 		if i+4 <= n {
 			y[i] += s0
 			y[i+1] += s1

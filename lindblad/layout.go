@@ -173,8 +173,8 @@ func (l *Layout) place(pieces, counters int) {
 	if l.reach > smallest { // below, full matrices are as good
 		l.reorder()
 	}
-	l.sortBy(l.n, func(t *triplet) int32 { return t.col })
-	l.sortBy(l.n, func(t *triplet) int32 { return t.row })
+	l.sort(l.n, false)
+	l.sort(l.n, true)
 	l.pops = l.pops[:0]
 	for i, g := range l.global {
 		if int(g) < l.levels {
@@ -281,18 +281,26 @@ func (l *Layout) reorder() {
 	}
 }
 
-// sortBy sorts the entries by a key below n, keeping the order of equals.
-func (l *Layout) sortBy(n int, key func(*triplet) int32) {
+// sort sorts the entries by rows or by columns, all below n, keeping the order
+// of equals.
+func (l *Layout) sort(n int, rows bool) {
 	l.count = zeroed(l.count, n+1)
 	l.sorted = sized(l.sorted, len(l.entries))
 	for i := range l.entries {
-		l.count[key(&l.entries[i])+1]++
+		k := l.entries[i].col
+		if rows {
+			k = l.entries[i].row
+		}
+		l.count[k+1]++
 	}
 	for i := 0; i < n; i++ {
 		l.count[i+1] += l.count[i]
 	}
 	for i := range l.entries {
-		k := key(&l.entries[i])
+		k := l.entries[i].col
+		if rows {
+			k = l.entries[i].row
+		}
 		l.sorted[l.count[k]] = l.entries[i]
 		l.count[k]++
 	}

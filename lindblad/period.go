@@ -1,15 +1,19 @@
 package lindblad
 
-import "math"
+import (
+	"fmt"
+	"math"
+)
 
 // A stretch whose terms are all of constant size, with rotors of commensurate
 // frequencies, repeats itself. Its propagators over the cells of one period
-// (as many as the sample times need) are integrated once, column by column;
+// (as many as the sample times need) are computed once;
 // then the state goes from sample to sample, or over whole periods, by
 // products.
 type periodic struct {
 	columns shaped
-	cells   []full // over equal parts of the period, from the stretch's start on
+	series  twoPoint // its matrices
+	cells   []full   // over equal parts of the period, from the stretch's start on
 	strides []propagator
 	x       []float64
 	theta   []float64
@@ -116,7 +120,8 @@ func (s *Solver) playPeriodic(i int) (bool, error) {
 	if err := s.handDuring(st); err != nil {
 		return true, err
 	}
-	for j := 0; c.next <= last; j++ {
+	j := 0
+	for ; c.next <= last; j++ {
 		p := &s.pe.strides[j%cells]
 		s.apply(p)
 		s.watch += p.worst
@@ -126,7 +131,11 @@ func (s *Solver) playPeriodic(i int) (bool, error) {
 		}
 		c.next++
 	}
-	if err := s.part(st, c.at(last)-start, st.Lasts); err != nil {
+	if rest := st.Lasts - (c.at(last) - start); math.Abs(rest-c.step) <= c.same {
+		p := &s.pe.strides[j%cells]
+		s.apply(p)
+		s.watch += p.worst
+	} else if err := s.part(st, c.at(last)-start, st.Lasts); err != nil {
 		return true, err
 	}
 	s.pass(st)
@@ -154,38 +163,163 @@ func (w *periodic) turned(s *Solver, st *Stretch, t float64) []float64 {
 	return w.theta
 }
 
-// layCells integrates the propagators of the cells: the basis vectors ride
-// along as if they were tangents of the first.
+// layCells computes the propagators of the cells.
 func (s *Solver) layCells(st *Stretch, from, length float64, cells int) error {
 	w := &s.pe
-	n := s.l.n
 	w.cells = sized(w.cells, cells)
-	w.x = sized(w.x, n*n)
 	plain := *st
 	plain.Slopes = nil
+	series := s.trigonometric(st)
+	if series {
+		w.prepareSeries(s, &plain, math.Max(s.perTime*length, 1e-15))
+	}
 	for j := range w.cells {
-		clear(w.x)
-		for q := 0; q < n; q++ {
-			w.x[q*n+q] = 1
-		}
 		f := field{&plain, w.turned(s, st, from+float64(j)*length), nil}
 		accuracy := math.Max(s.perTime*length, 1e-15)
-		if err := w.columns.run(s.ctx, s.l, &f, w.x, n-1, length, accuracy, &s.stats, ignore); err != nil {
+		var err error
+		if series {
+			err = w.cellBySeries(s, &w.cells[j], &f, length, accuracy)
+		} else {
+			err = w.cellByColumns(s, &w.cells[j], &f, length, accuracy)
+		}
+		if err != nil {
 			return err
 		}
-		cell := &w.cells[j]
-		cell.reset(s.l, 0)
-		clear(cell.a)
-		for b := range cell.lo {
-			cell.lo[b], cell.hi[b] = 0, int32(cell.m)
+		w.cells[j].conserve(s.l.pops, w.cells[j].spareRows(nil, s.l.pops))
+	}
+	return nil
+}
+
+// trigonometric tells whether the terms have no envelopes: the series of their
+// coefficients then have no surprises.
+func (s *Solver) trigonometric(st *Stretch) bool {
+	for i := range st.Terms {
+		if st.Terms[i].Envelope != nil {
+			return false
 		}
-		for q := 0; q < n; q++ {
-			for i := 0; i < n; i++ {
-				cell.a[i*cell.m+q] = w.x[q*n+i]
+	}
+	return true
+}
+
+// prepareSeries picks the order of the matrices' series.
+func (w *periodic) prepareSeries(s *Solver, st *Stretch, accuracy float64) {
+	l := s.l
+	n := l.n
+	a := &w.columns.taylor
+	a.prepare(l, st, 0)
+	drives := 0
+	for i := range a.driven {
+		drives += len(a.driven[i].val)
+	}
+	b := &w.series
+	b.w = a
+	b.m = bestOrder(0.1*accuracy, func(k int) float64 {
+		return float64(k*len(l.col)) + float64(drives*k*k)/2 + float64(20*n)
+	})
+	b.mats, b.before = sized(b.mats, (b.m+1)*n*n), sized(b.before, (b.m+1)*n*n)
+	b.layDrives()
+}
+
+// cellBySeries multiplies Taylor polynomials Σ N_p h^p, dN/dt = L N, N_0 = 1.
+func (w *periodic) cellBySeries(s *Solver, cell *full, f *field, length, accuracy float64) error {
+	l := s.l
+	n := l.n
+	a, b := &w.columns.taylor, &w.series
+	cell.reset(l, 0)
+	cell.fill()
+	var q, r full
+	q.reset(l, 0)
+	q.fill()
+	r.reset(l, 0)
+	for t, steps := 0.0, 0; t < length; steps++ {
+		if steps%64 == 0 && s.ctx.Err() != nil {
+			return s.ctx.Err()
+		}
+		a.coefficients(f, t, b.m)
+		b.matrices()
+		h := math.Min(b.reach(accuracy/length), length-t)
+		if !(h > 1e-15*length) {
+			return fmt.Errorf("lindblad: the step became too small at time %g of a period of %g: a value is not finite", t, length)
+		}
+		for i := 0; i < n; i++ {
+			row := q.a[i*q.m : i*q.m+n]
+			clear(row)
+			for p := b.m; p >= 1; p-- {
+				for j, v := range b.mats[p*n*n+i*n:][:len(row)] {
+					row[j] = (row[j] + v) * h
+				}
 			}
-			cell.a[q*cell.m+q]--
 		}
-		cell.conserve(s.l.pops, cell.spareRows(nil, s.l.pops))
+		s.stats.Steps++
+		s.stats.Products += b.m
+		if t == 0 {
+			copy(cell.a, q.a)
+		} else { // the step after what was there
+			r.fill()
+			r.multiply(&q, cell)
+			r.addTo(&q, 1)
+			r.addTo(cell, 1)
+			copy(cell.a, r.a)
+		}
+		if t += h; length-t < 1e-15*length {
+			break
+		}
+	}
+	return nil
+}
+
+// reach proposes a step from the last matrices: the first one left out is taken
+// to continue their ratio.
+func (b *twoPoint) reach(perTime float64) float64 {
+	n := b.w.l.n
+	size := func(p int) (most float64) { // largest sum of a row
+		for i := 0; i < n; i++ {
+			var sum float64
+			for _, v := range b.mats[p*n*n+i*n:][:n] {
+				sum += math.Abs(v)
+			}
+			most = math.Max(most, sum)
+		}
+		return most
+	}
+	x, y, z := size(b.m-2), size(b.m-1), size(b.m)
+	if z != z {
+		return 0
+	}
+	ratio := math.Max(math.Max(z/math.Max(y, 1e-300), y/math.Max(x, 1e-300)), 1e-300)
+	last := math.Max(z, y*ratio/2)
+	if last == 0 {
+		return math.Inf(1)
+	}
+	return math.Min(0.9*math.Pow(perTime/(last*ratio), 1/float64(b.m)), 0.7/ratio)
+}
+
+// fill clears the matrix and opens its intervals.
+func (x *full) fill() {
+	clear(x.a)
+	for b := range x.lo {
+		x.lo[b], x.hi[b] = 0, int32(x.m)
+	}
+}
+
+// cellByColumns integrates the basis vectors: they ride along as if they were
+// tangents of the first.
+func (w *periodic) cellByColumns(s *Solver, cell *full, f *field, length, accuracy float64) error {
+	n := s.l.n
+	w.x = zeroed(w.x, n*n)
+	for q := 0; q < n; q++ {
+		w.x[q*n+q] = 1
+	}
+	if err := w.columns.run(s.ctx, s.l, f, w.x, n-1, length, accuracy, &s.stats, ignore); err != nil {
+		return err
+	}
+	cell.reset(s.l, 0)
+	cell.fill()
+	for q := 0; q < n; q++ {
+		for i := 0; i < n; i++ {
+			cell.a[i*cell.m+q] = w.x[q*n+i]
+		}
+		cell.a[q*cell.m+q]--
 	}
 	return nil
 }

@@ -18,21 +18,22 @@ func (p *polynomial) part(i, q, n int) []float64 {
 	return p.c[i*p.block+q*n:][:n]
 }
 
-// at evaluates the polynomial at τ, two orders at a time.
+// at evaluates the polynomial at τ, four orders at a time.
 func (p *polynomial) at(y []float64, tau float64) {
 	u := tau / p.scale
 	n := p.block
 	y = y[:n]
 	i := p.order
 	copy(y, p.c[i*n:])
-	for ; i >= 2; i -= 2 {
+	for ; i >= 4; i -= 4 {
 		a, b := p.c[(i-1)*n:][:len(y)], p.c[(i-2)*n:][:len(y)]
+		c, d := p.c[(i-3)*n:][:len(y)], p.c[(i-4)*n:][:len(y)]
 		for j, v := range y {
-			y[j] = (v*u+a[j])*u + b[j]
+			y[j] = (((v*u+a[j])*u+b[j])*u+c[j])*u + d[j]
 		}
 	}
-	if i == 1 {
-		c := p.c[:len(y)]
+	for ; i >= 1; i-- {
+		c := p.c[(i-1)*n:][:len(y)]
 		for j, v := range c {
 			y[j] = y[j]*u + v
 		}

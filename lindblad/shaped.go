@@ -39,7 +39,7 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 	perTime := accuracy / lasts
 	a := &w.taylor
 	a.prepare(l, f.stretch, k)
-	order := a.bestOrder(1e-3 * accuracy)
+	order := bestOrder(1e-3*accuracy, a.cost)
 	b := &w.twoPoint
 	b.possible = n <= implicitSize
 	if b.possible {

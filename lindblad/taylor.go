@@ -55,12 +55,12 @@ var logFactorial = func() (c [maxOrder + 1]float64) {
 // bestOrder returns the order that makes the most progress per multiplication
 // when a step may err by tolerance: order K reaches h with (h‖L‖)^{K+1}/(K+1)!
 // of that size.
-func (w *taylor) bestOrder(tolerance float64) int {
+func bestOrder(tolerance float64, cost func(order int) float64) int {
 	best, most := 0, 0.0
 	log := math.Log(tolerance)
 	for k := 6; k < maxOrder; k++ {
 		h := math.Exp((log + logFactorial[k+1]) / float64(k+1))
-		if v := math.Min(h, 0.7*float64(k)) / w.cost(k); v > most {
+		if v := math.Min(h, 0.7*float64(k)) / cost(k); v > most {
 			best, most = k, v
 		}
 	}

@@ -76,6 +76,14 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.before = sized(b.before, (b.m+1)*n*n)
 	b.local, b.global = sized(b.local, n), zeroed(b.global, n)
 	b.budget = 0.5 * accuracy
+	b.layDrives()
+}
+
+// layDrives sorts the entries of the driven pieces by rows and lays out the
+// recursion of the matrices.
+func (b *twoPoint) layDrives() {
+	w := b.w
+	n := w.l.n
 	b.drives, b.byRow = b.drives[:0], append(b.byRow[:0], 0)
 	for i := int32(0); i < int32(n); i++ {
 		for j := range w.driven {
@@ -239,7 +247,11 @@ func (b *twoPoint) matrices() {
 	}
 	out := b.mats[n*n:]
 	var nine [][9]float64 // the rows of the matrices
-	if n == 9 {
+	var four [][4]float64
+	switch n {
+	case 4:
+		four = unsafe.Slice((*[4]float64)(b.mats), len(b.mats)/4)
+	case 9:
 		nine = unsafe.Slice((*[9]float64)(b.mats), len(b.mats)/9)
 	}
 	for r, from := range b.rows[:n*b.m] {
@@ -247,6 +259,10 @@ func (b *twoPoint) matrices() {
 		row := out[r*n : r*n+n]
 		if n == 9 {
 			sumRows9((*[9]float64)(row), nine, terms, b.coef)
+			continue
+		}
+		if n == 4 {
+			sumRows4((*[4]float64)(row), four, terms, b.coef)
 			continue
 		}
 		clear(row)
@@ -257,6 +273,21 @@ func (b *twoPoint) matrices() {
 			}
 		}
 	}
+}
+
+// sumRows4 adds up terms.
+func sumRows4(row *[4]float64, mats [][4]float64, terms []rowTerm, coef []float64) {
+	var s0, s1, s2, s3 float64
+	for i := 1; i < len(terms); i += 2 {
+		t, u := &terms[i-1], &terms[i]
+		x, y := &mats[t.at], &mats[u.at]
+		f, g := t.factor*coef[t.coef], u.factor*coef[u.coef]
+		s0 += f*x[0] + g*y[0]
+		s1 += f*x[1] + g*y[1]
+		s2 += f*x[2] + g*y[2]
+		s3 += f*x[3] + g*y[3]
+	}
+	row[0], row[1], row[2], row[3] = s0, s1, s2, s3
 }
 
 // sumRows9 adds up terms, two at a time and the columns in two goes, so that
