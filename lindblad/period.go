@@ -93,7 +93,7 @@ func (s *Solver) playPeriodic(i int) (bool, error) {
 		if err := s.layCells(st, 0, period, 1); err != nil {
 			return true, err
 		}
-		p := s.pe.power(s, whole)
+		p := s.periods.power(s, whole)
 		s.apply(p)
 		s.watch = math.Inf(1)
 		if err := s.part(st, float64(whole)*period, st.Lasts); err != nil {
@@ -116,13 +116,13 @@ func (s *Solver) playPeriodic(i int) (bool, error) {
 	if err := s.layCells(st, first, period/float64(cells), cells); err != nil {
 		return true, err
 	}
-	s.pe.layStrides(s, cells, perStep)
+	s.periods.layStrides(s, cells, perStep)
 	if err := s.handDuring(st); err != nil {
 		return true, err
 	}
 	j := 0
 	for ; c.next <= last; j++ {
-		p := &s.pe.strides[j%cells]
+		p := &s.periods.strides[j%cells]
 		s.apply(p)
 		s.watch += p.worst
 		s.keep()
@@ -132,7 +132,7 @@ func (s *Solver) playPeriodic(i int) (bool, error) {
 		c.next++
 	}
 	if rest := st.Lasts - (c.at(last) - start); math.Abs(rest-c.step) <= c.same {
-		p := &s.pe.strides[j%cells]
+		p := &s.periods.strides[j%cells]
 		s.apply(p)
 		s.watch += p.worst
 	} else if err := s.part(st, c.at(last)-start, st.Lasts); err != nil {
@@ -147,7 +147,7 @@ func (s *Solver) part(st *Stretch, from, to float64) error {
 	if to-from <= s.clock.same && from > 0 || to <= from {
 		return nil
 	}
-	f := field{st, s.pe.turned(s, st, from), s.dtheta}
+	f := field{st, s.periods.turned(s, st, from), s.dtheta}
 	s.watch = math.Inf(1)
 	return s.shaped.run(s.ctx, s.l, &f, s.x, s.k, to-from, s.perTime*(to-from), &s.stats, ignore)
 }
@@ -165,7 +165,7 @@ func (w *periodic) turned(s *Solver, st *Stretch, t float64) []float64 {
 
 // layCells computes the propagators of the cells.
 func (s *Solver) layCells(st *Stretch, from, length float64, cells int) error {
-	w := &s.pe
+	w := &s.periods
 	w.cells = sized(w.cells, cells)
 	plain := *st
 	plain.Slopes = nil

@@ -48,7 +48,7 @@ type Solver struct {
 	squares [3][16]float64
 	exp     exponential
 	shaped  shaped
-	pe      periodic
+	periods periodic
 	cone    cone
 	theta   []float64
 	dtheta  [][]float64

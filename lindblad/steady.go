@@ -123,7 +123,7 @@ func (s *Solver) orderMap(m *full, order []Node) (*full, error) {
 					return nil, err
 				}
 				c := new(full)
-				c.copyFrom(&s.pe.cells[0])
+				c.copyFrom(&s.periods.cells[0])
 				m = s.chain(c, m)
 			}
 			if !st.Ideal {
