@@ -1,0 +1,123 @@
+package experiment
+
+import (
+	"fmt"
+	"strings"
+
+	"rhotrace/models"
+)
+
+// model is what the laboratory has, without numbers.
+func (s *shape) model() models.Model {
+	m := models.Model{Levels: len(s.levels)}
+	for _, d := range s.drives {
+		m.Drives = append(m.Drives, models.Drive{Pairs: d.pairs})
+	}
+	for _, d := range s.decays {
+		m.Decays = append(m.Decays, models.Decay{Pairs: d.pairs, Joint: d.joint, Reversible: !d.joint && len(d.pairs) == 1})
+	}
+	for _, d := range s.dephasings {
+		m.Dephasings = append(m.Dephasings, models.Weighted{Levels: d.levels})
+	}
+	for _, d := range s.shifts {
+		m.Shifts = append(m.Shifts, models.Weighted{Levels: d.levels})
+	}
+	if s.readout != nil {
+		m.Counted = s.readout.counted
+	}
+	return m
+}
+
+// checkModel lays the model out once to find what does not fit together.
+func (r *reader) checkModel() {
+	s := r.e.shape
+	for _, d := range s.decays {
+		if !d.joint {
+			continue
+		}
+		frames, err := models.FindFrames(s.model())
+		if err != nil {
+			continue
+		}
+		for _, p := range d.pairs[1:] {
+			if !frames.SameStep(d.pairs[0], p) {
+				r.fail(s.root.at(joinKey("decay", d.name, "pairs")), joinKey("decay", d.name, "pairs"),
+					"%s and %s turn at different frequencies in the frame of the drives, so they cannot form one jump operator; give each a decay of its own",
+					s.pairName(d.pairs[0]), s.pairName(p))
+				return
+			}
+		}
+	}
+	layout, err := models.NewLayout(s.model())
+	if err != nil {
+		r.fail(nil, "", "%v", err)
+		return
+	}
+	for i, d := range s.drives {
+		if d.linewidth != none && layout.Frames.InLoop(i) {
+			r.fail(s.nodes[d.linewidth], s.dials[d.linewidth].Path,
+				"is on a drive that is part of a closed loop, where the phase of one source cannot be told from the others'; use a dephasing of the level between two beams of one laser, or a noise on the detuning")
+		}
+	}
+	r.warnLoops(&layout.Frames)
+}
+
+func (s *shape) pairName(p models.Pair) string { return s.levels[p.From] + ":" + s.levels[p.To] }
+
+// warnLoops tells that the frame in which a coherence is given depends on the
+// order of the drives when they close a loop.
+func (r *reader) warnLoops(f *models.Frames) {
+	if len(f.Loops) == 0 {
+		return
+	}
+	s := r.e.shape
+	inLoop := map[int]bool{}
+	for i, d := range s.drives {
+		for _, p := range d.pairs {
+			if f.InLoop(i) {
+				inLoop[p.From], inLoop[p.To] = true, true
+			}
+		}
+	}
+	read := append([][2]int(nil), s.record.coherences...)
+	if s.readout != nil {
+		read = append(read, s.readout.pairs...)
+	}
+	for _, p := range read {
+		if inLoop[p[0]] && inLoop[p[1]] {
+			r.warnings = append(r.warnings, fmt.Sprintf("coherence %s:%s is given in a frame that depends on the order of the drives, because they close a loop (`rhotrace dials` shows the frames)",
+				s.levels[p[0]], s.levels[p[1]]))
+		}
+	}
+}
+
+// Frames says for each level which running phases its frame carries, as
+// "clock − repump".
+func (e *Experiment) Frames() []string {
+	frames, err := models.FindFrames(e.shape.model())
+	if err != nil {
+		return nil
+	}
+	out := make([]string, len(e.shape.levels))
+	for a := range out {
+		var b strings.Builder
+		for n, m := range frames.Counts[a] {
+			sign := " + "
+			if m < 0 {
+				sign, m = " − ", -m
+			}
+			for ; m > 0; m-- {
+				b.WriteString(sign + e.shape.drives[n].name)
+			}
+		}
+		switch text := strings.TrimPrefix(b.String(), " + "); {
+		case text != "":
+			out[a] = strings.TrimSpace(text)
+		case frames.Group[a] == 0:
+			out[a] = "at rest"
+		default:
+			out[a] = "at rest with " + e.shape.levels[frames.Group[a]]
+		}
+	}
+	return out
+}
