@@ -43,18 +43,18 @@ type columns struct {
 	touched []int32
 }
 
-func (w *columns) add(r, s int, v complex128, size float64) {
+func (w *columns) add(r, s int, v complex128, all float64) {
 	if r <= s {
 		i := r*w.levels + s
 		w.touch(i)
 		w.upper[i] += v
-		w.size[i] += size
+		w.size[i] += all
 		return
 	}
 	i := s*w.levels + r
 	w.touch(i)
 	w.lower[i] += complex(real(v), -imag(v))
-	w.size[i] += size
+	w.size[i] += all
 }
 
 func (w *columns) touch(i int) {
@@ -100,7 +100,7 @@ func (w *columns) compile(c *compiled, p *Piece) error {
 	switch p.kind {
 	case hamiltonian:
 		for _, e := range p.op {
-			w.add2(e.Row, e.Col, -1i*e.Value, cmplx.Abs(e.Value))
+			w.add2(e.Row, e.Col, -1i*e.Value, size(e.Value))
 		}
 		w.gather(&c.k)
 		return w.hermitian(p.op, "a Hamiltonian")
@@ -128,7 +128,7 @@ func (w *columns) compile(c *compiled, p *Piece) error {
 		}
 	case count:
 		for _, e := range p.op {
-			w.add2(e.Row, e.Col, e.Value, cmplx.Abs(e.Value))
+			w.add2(e.Row, e.Col, e.Value, size(e.Value))
 		}
 		w.gather(&c.k)
 		return w.hermitian(p.op, "the operator of a count")
@@ -140,11 +140,11 @@ func (w *columns) compile(c *compiled, p *Piece) error {
 func (w *columns) hermitian(o Operator, what string) error {
 	defer w.clear()
 	for _, e := range o {
-		w.add2(e.Row, e.Col, e.Value, cmplx.Abs(e.Value))
-		w.add2(e.Col, e.Row, -cmplx.Conj(e.Value), cmplx.Abs(e.Value))
+		w.add2(e.Row, e.Col, e.Value, size(e.Value))
+		w.add2(e.Col, e.Row, -cmplx.Conj(e.Value), size(e.Value))
 	}
 	for _, i := range w.touched {
-		if cmplx.Abs(w.upper[i]) > 1e-12*w.size[i] {
+		if size(w.upper[i]) > 1e-12*w.size[i] {
 			return fmt.Errorf("%s must be Hermitian; element (%d, %d) is not the conjugate of its mirror image",
 				what, int(i)/w.levels, int(i)%w.levels)
 		}
@@ -153,11 +153,11 @@ func (w *columns) hermitian(o Operator, what string) error {
 }
 
 // add2 adds to element (r, s) as it stands, above or below the diagonal.
-func (w *columns) add2(r, s int, v complex128, size float64) {
+func (w *columns) add2(r, s int, v complex128, all float64) {
 	i := r*w.levels + s
 	w.touch(i)
 	w.upper[i] += v
-	w.size[i] += size
+	w.size[i] += all
 }
 
 // square adds −½ a†b.
@@ -166,7 +166,7 @@ func (w *columns) square(a, b Operator) {
 		for _, f := range b {
 			if e.Row == f.Row {
 				v := -0.5 * cmplx.Conj(e.Value) * f.Value
-				w.add2(e.Col, f.Col, v, cmplx.Abs(v))
+				w.add2(e.Col, f.Col, v, size(v))
 			}
 		}
 	}
@@ -174,7 +174,7 @@ func (w *columns) square(a, b Operator) {
 
 func (w *columns) operator(c *compiled, o Operator) {
 	for _, e := range o {
-		w.add2(e.Row, e.Col, e.Value, cmplx.Abs(e.Value))
+		w.add2(e.Row, e.Col, e.Value, size(e.Value))
 	}
 	if len(c.ops) < cap(c.ops) {
 		c.ops = c.ops[:len(c.ops)+1]
@@ -190,7 +190,7 @@ func (w *columns) gather(m *sparse) {
 	m.start = zeroed(m.start, n+1)
 	kept := 0
 	for _, i := range w.touched {
-		if cmplx.Abs(w.upper[i]) > negligible*w.size[i] {
+		if size(w.upper[i]) > negligible*w.size[i] {
 			m.start[int(i)%n+1]++
 			kept++
 		}
@@ -200,7 +200,7 @@ func (w *columns) gather(m *sparse) {
 	}
 	m.row, m.val, m.abs = sized(m.row, kept), sized(m.val, kept), sized(m.abs, kept)
 	for _, i := range w.touched {
-		if cmplx.Abs(w.upper[i]) > negligible*w.size[i] {
+		if size(w.upper[i]) > negligible*w.size[i] {
 			j := int(i) % n
 			p := m.start[j]
 			m.start[j]++
@@ -242,7 +242,7 @@ func (w *columns) sandwich(x, y *sparse, a, b int) {
 	for i := x.start[a]; i < x.start[a+1]; i++ {
 		for j := y.start[b]; j < y.start[b+1]; j++ {
 			v := x.val[i] * cmplx.Conj(y.val[j])
-			w.add(int(x.row[i]), int(y.row[j]), v, cmplx.Abs(v))
+			w.add(int(x.row[i]), int(y.row[j]), v, size(v))
 		}
 	}
 }
@@ -321,6 +321,9 @@ func (w *columns) functional(o *sparse, a, b, part int) float64 {
 		return imag(at(a, b)-at(b, a)) / math.Sqrt2
 	}
 }
+
+// size is between |z| and √2|z|.
+func size(z complex128) float64 { return math.Abs(real(z)) + math.Abs(imag(z)) }
 
 // sized returns s with length n, reusing its memory; contents are arbitrary.
 func sized[T any](s []T, n int) []T {

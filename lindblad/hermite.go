@@ -21,8 +21,27 @@ func (w *hermite) reset(m int) {
 	}
 }
 
-// side sets weights to h^p α_p(u), or to its derivative by u.
-func (w *hermite) side(out *[maxOrder]float64, u, h float64, derivative bool) {
+// side sets weights to h^p α_p(u).
+func (w *hermite) side(out *[maxOrder]float64, u, h float64) {
+	m := w.m
+	power, low, v := 1.0, 1-u, 1-u // u^j, (1−u)^{j+1}
+	sum := 0.0
+	for j, c := range w.binomials[:m+1] {
+		sum += c * power
+		out[m-j] = sum
+		power *= u
+		if j < m {
+			low *= v
+		}
+	}
+	for p := range out[:m+1] {
+		out[p] *= low
+		low *= u * h
+	}
+}
+
+// slopes sets weights to the derivative of h^p α_p(u) by u.
+func (w *hermite) slopes(out *[maxOrder]float64, u, h float64) {
 	m := w.m
 	var sums, slopes [maxOrder]float64
 	var sum, slope float64
@@ -40,28 +59,20 @@ func (w *hermite) side(out *[maxOrder]float64, u, h float64, derivative bool) {
 		low *= v
 	}
 	power = 1
-	before := 0.0 // p u^{p−1}, with h^p
+	before := 0.0 // the derivative of power
 	for p := 0; p <= m; p++ {
-		if derivative {
-			out[p] = before*low*v*sums[m-p] - power*low*float64(m+1)*sums[m-p] + power*low*v*slopes[m-p]
-			before = float64(p+1) * power * h
-		} else {
-			out[p] = power * low * v * sums[m-p]
-		}
+		out[p] = low * (before*v*sums[m-p] - power*float64(m+1)*sums[m-p] + power*v*slopes[m-p])
+		before = float64(p+1) * power * h
 		power *= u * h
 	}
 }
 
-func (w *hermite) mix(y []float64, u float64, derivative bool) {
-	w.side(&w.weights[0], u, w.h, derivative)
-	w.side(&w.weights[1], 1-u, -w.h, derivative)
+// mix sets y to the sum of both ends' series with the weights, those of the end
+// times sign.
+func (w *hermite) mix(y []float64, sign float64) {
 	block := w.start.block
 	y = y[:block]
 	a, b := w.start.c, w.end.c
-	sign := 1.0
-	if derivative {
-		sign = -1
-	}
 	clear(y)
 	for p := 0; p <= w.m; p++ {
 		f, g := w.weights[0][p], sign*w.weights[1][p]
@@ -73,11 +84,19 @@ func (w *hermite) mix(y []float64, u float64, derivative bool) {
 }
 
 // at evaluates the state at τ.
-func (w *hermite) at(y []float64, tau float64) { w.mix(y, tau/w.h, false) }
+func (w *hermite) at(y []float64, tau float64) {
+	u := tau / w.h
+	w.side(&w.weights[0], u, w.h)
+	w.side(&w.weights[1], 1-u, -w.h)
+	w.mix(y, 1)
+}
 
 // slopeAt evaluates its derivative by time.
 func (w *hermite) slopeAt(y []float64, tau float64) {
-	w.mix(y, tau/w.h, true)
+	u := tau / w.h
+	w.slopes(&w.weights[0], u, w.h)
+	w.slopes(&w.weights[1], 1-u, -w.h)
+	w.mix(y, -1)
 	for i := range y[:w.start.block] {
 		y[i] /= w.h
 	}

@@ -335,10 +335,12 @@ func (s *Solver) keep() {
 func (s *Solver) guard(x []float64) {
 	s.watch = 0
 	s.stats.TraceError = math.Max(s.stats.TraceError, math.Abs(s.l.trace(x)-s.trace))
+	trace := s.l.trace(x)
 	low, repaired := s.cone.keep(s.l, x)
 	if !repaired {
 		return
 	}
+	s.l.setTrace(x, trace)
 	s.stats.Projections++
 	s.stats.LowestFound = math.Min(s.stats.LowestFound, low)
 	if -low > s.accuracy {

@@ -80,7 +80,7 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 				a.coefficients(f, t, order)
 				a.expand(&a.poly, order)
 			}
-			h, err = a.explicit(f, t, math.Min(limit, rest), 0.5*perTime, stats)
+			h, err = a.explicit(f, t, math.Min(limit, rest), 0.3*perTime, stats)
 			b.forget()
 			p = &a.poly
 			limit = 3 * h

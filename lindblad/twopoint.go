@@ -64,7 +64,7 @@ func padeWeights(m int) []float64 {
 
 func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.w = w
-	if m := min(max(int(0.3*math.Log(1/accuracy)+0.6), 3), 8); m != b.m {
+	if m := min(max(int(0.3*math.Log(1/accuracy)+1.5), 3), 8); m != b.m {
 		b.m = m
 		b.weights = [2][]float64{padeWeights(m), padeWeights(m + 1)}
 		b.inside.reset(m)
@@ -75,7 +75,7 @@ func (b *twoPoint) prepare(w *taylor, accuracy float64) {
 	b.mats, b.lu, b.pivot = sized(b.mats, (b.m+1)*n*n), sized(b.lu, n*n), sized(b.pivot, n)
 	b.before = sized(b.before, (b.m+1)*n*n)
 	b.local, b.global = sized(b.local, n), zeroed(b.global, n)
-	b.budget = 0.5 * accuracy
+	b.budget = 0.4 * accuracy
 	b.layDrives()
 }
 
@@ -155,9 +155,9 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 			}
 			worst = b.residual(h)
 		}
-		allowed := math.Max(0.5*perTime*h, roundingStep)
+		allowed := math.Max(0.3*perTime*h, roundingStep)
 		if k == 0 {
-			allowed += 0.25 * math.Max(0, b.budget-b.carried-largest(b.global))
+			allowed += 0.3 * math.Max(0, b.budget-b.carried-largest(b.global))
 		}
 		grow := 3.0
 		if worst > 0 {
@@ -376,6 +376,14 @@ func (b *twoPoint) carry(h float64) {
 			power *= h
 			f := b.weights[0][p] * power
 			a := b.before[p*n*n : (p+1)*n*n]
+			if n == 9 {
+				var y [9]float64
+				times9(&y, (*[81]float64)(a), (*[9]float64)(g))
+				for i, v := range y {
+					e[i] += f * v
+				}
+				continue
+			}
 			for i := range e {
 				var s float64
 				row := a[i*n : i*n+n]
