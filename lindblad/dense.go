@@ -106,17 +106,7 @@ func (x *full) copyFrom(y *full) {
 // multiply sets c = a·b with derivatives: (A, E)(B, F) = (AB, AF + EB).
 func (c *full) multiply(a, b *full) {
 	if c.n > smallest {
-		for i := range a.lo {
-			lo, hi := int32(c.m), int32(0)
-			for k := a.lo[i] / 4; k < a.hi[i]/4; k++ {
-				lo, hi = min(lo, b.lo[k]), max(hi, b.hi[k])
-			}
-			lo, hi = max(lo, c.limit.lo[i]), min(hi, c.limit.hi[i])
-			if hi <= lo {
-				lo, hi = 0, 0
-			}
-			c.lo[i], c.hi[i] = lo, hi
-		}
+		c.span(a, b)
 	}
 	c.product(a, b, 0, 0, 0, false)
 	for j := 1; j <= c.k; j++ {
@@ -162,9 +152,61 @@ func (c *full) square(a *full) {
 		square4((*[16]float64)(c.a), (*[16]float64)(a.a), (*[16]float64)(a.a))
 	case c.n == 9 && c.k == 0:
 		square9((*[81]float64)(c.a), (*[81]float64)(a.a), (*[81]float64)(a.a))
-	default:
+	case c.n <= smallest:
 		c.multiply(a, a)
 		c.addTo(a, 2)
+	default:
+		c.squareBlocks(a)
+	}
+}
+
+// squareBlocks starts from 2a and adds the products.
+func (c *full) squareBlocks(a *full) {
+	c.span(a, a)
+	for i := range c.lo { // where a has a diagonal it lies inside a·a; union for the rest
+		if a.lo[i] < a.hi[i] {
+			if c.lo[i] >= c.hi[i] {
+				c.lo[i], c.hi[i] = a.lo[i], a.hi[i]
+			}
+			c.lo[i], c.hi[i] = min(c.lo[i], a.lo[i]), max(c.hi[i], a.hi[i])
+		}
+		lo, hi := int(c.lo[i]), int(c.hi[i])
+		from, to := int(a.lo[i]), int(a.hi[i])
+		for q := 0; q <= c.k; q++ {
+			z, x := c.part(q), a.part(q)
+			for r := 4 * i * c.m; r < (4*i+4)*c.m; r += c.m {
+				if from >= to {
+					clear(z[r+lo : r+hi])
+					continue
+				}
+				clear(z[r+lo : r+from])
+				clear(z[r+to : r+hi])
+				row := z[r+from : r+to]
+				for j, v := range x[r+from:][:len(row)] {
+					row[j] = 2 * v
+				}
+			}
+		}
+	}
+	c.product(a, a, 0, 0, 0, true)
+	for j := 1; j <= c.k; j++ {
+		c.product(a, a, j, 0, j, true)
+		c.product(a, a, j, j, 0, true)
+	}
+}
+
+// span sets the intervals to those of a product.
+func (c *full) span(a, b *full) {
+	for i := range a.lo {
+		lo, hi := int32(c.m), int32(0)
+		for k := a.lo[i] / 4; k < a.hi[i]/4; k++ {
+			lo, hi = min(lo, b.lo[k]), max(hi, b.hi[k])
+		}
+		lo, hi = max(lo, c.limit.lo[i]), min(hi, c.limit.hi[i])
+		if hi <= lo {
+			lo, hi = 0, 0
+		}
+		c.lo[i], c.hi[i] = lo, hi
 	}
 }
 
