@@ -385,3 +385,64 @@ func TestDisparateRates(t *testing.T) {
 	assert.InDelta(t, slow/(fast-slow)*(math.Exp(-slow*time)-math.Exp(-fast*time)), l.Population(got, 1), 1e-13)
 	assert.InDelta(t, 1, l.trace(got), 1e-15)
 }
+
+// ramps is linear between its knots, one time unit apart.
+type ramps []float64
+
+func (r ramps) segment(t float64) int { return min(max(int(t), 0), len(r)-2) }
+
+func (r ramps) At(t float64) float64 {
+	i := r.segment(t)
+	return r[i] + (r[i+1]-r[i])*(t-float64(i))
+}
+
+func (r ramps) Taylor(t float64, c []float64) {
+	i := r.segment(t)
+	clear(c)
+	c[0] = r.At(t)
+	if len(c) > 1 {
+		c[1] = r[i+1] - r[i]
+	}
+}
+
+func (r ramps) NextBreak(t float64) float64 {
+	if next := math.Floor(t) + 1; next < float64(len(r)-1) {
+		return next
+	}
+	return math.Inf(1)
+}
+
+// line is linear without a break.
+type line struct{ from, to float64 }
+
+func (l line) At(t float64) float64 { return l.from + (l.to-l.from)*t }
+func (l line) Taylor(t float64, c []float64) {
+	clear(c)
+	c[0] = l.At(t)
+	if len(c) > 1 {
+		c[1] = l.to - l.from
+	}
+}
+
+// An envelope with breaks against one stretch per smooth part, explicit steps
+// and the two-point series (large detuning) alike.
+func TestBreaks(t *testing.T) {
+	l, x := twoLevels(t)
+	knots := ramps{0, 3, 1, 1, -2, 4, 0}
+	for _, detuning := range []float64{0.5, 300} {
+		coef := []float64{0, detuning, 20}
+		term := func(e Envelope) []Term { return []Term{{Piece: 0, Amplitude: 2, Envelope: e, Rotor: -1}} }
+		v := NewSolver(l, nil, Settings{})
+		got := end(t, v, x, []Stretch{{Lasts: 6, Coef: coef, Terms: term(knots)}}, []Node{{}})
+		var parts []Stretch
+		var order []Node
+		for i := range len(knots) - 1 {
+			parts = append(parts, Stretch{Lasts: 1, Coef: coef, Terms: term(line{knots[i], knots[i+1]})})
+			order = append(order, Node{Stretch: i})
+		}
+		want := end(t, NewSolver(l, nil, Settings{Accuracy: 1e-12}), x, parts, order)
+		for i := range want {
+			assert.InDelta(t, want[i], got[i], 1e-8)
+		}
+	}
+}

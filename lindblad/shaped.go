@@ -80,7 +80,7 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 				a.coefficients(f, t, order)
 				a.expand(&a.poly, order)
 			}
-			h, err = a.explicit(f, t, math.Min(limit, rest), 0.3*perTime, stats)
+			h, err = a.explicit(f, t, limit, rest, 0.3*perTime, stats)
 			b.forget()
 			p = &a.poly
 			limit = 3 * h
@@ -133,15 +133,24 @@ func (w *shaped) run(ctx context.Context, l *Layout, f *field, x []float64, k in
 	return nil
 }
 
-// explicit takes a step of Taylor's method of at most longest from the series
-// in w.poly, leaving the state in w.next; it returns the step.
-func (w *taylor) explicit(f *field, t, longest, perTime float64, stats *Stats) (float64, error) {
+// endOf is a step's end as seen from within: where a step is cut, an envelope
+// may break, and the series of the far side must not be used.
+func endOf(t float64, cut bool) float64 {
+	if cut {
+		return math.Nextafter(t, math.Inf(-1))
+	}
+	return t
+}
+
+// explicit takes a step of Taylor's method of at most limit, cut at longest, from
+// the series in w.poly, leaving the state in w.next; it returns the step.
+func (w *taylor) explicit(f *field, t, limit, longest, perTime float64, stats *Stats) (float64, error) {
 	stats.Products += w.poly.order
-	h := math.Min(w.step(perTime), longest)
+	h := math.Min(math.Min(w.step(perTime), limit), longest)
 	for tries := 0; ; tries++ {
 		w.poly.at(w.next, h)
 		w.poly.slopeAt(w.slope, h)
-		d := w.defect(f, t+h)
+		d := w.defect(f, endOf(t+h, h == longest))
 		if d <= perTime*float64(w.poly.order) {
 			return h, nil
 		}

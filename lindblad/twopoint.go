@@ -121,7 +121,7 @@ func (b *twoPoint) take(f *field, t, longest, perTime float64, stats *Stats) (fl
 		} else if 2*h > longest {
 			h = longest / 2
 		}
-		w.coefficients(f, t+h, m+1)
+		w.coefficients(f, endOf(t+h, h == longest), m+1)
 		b.matrices()
 		b.system(h)
 		ok := b.factor()
