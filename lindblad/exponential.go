@@ -200,7 +200,9 @@ func (x *full) conserve(pops, spare []int32) {
 				if spare[c] < 0 && sum != 0 {
 					spare[c] = x.spareRow(c, pops)
 				}
-				a[max(spare[c], 0)] -= sum
+				if spare[c] >= 0 { // else only slopes are here: their sum is rounding already
+					a[spare[c]] -= sum
+				}
 			}
 		}
 		return
@@ -222,7 +224,9 @@ func (x *full) conserve(pops, spare []int32) {
 			if spare[c] < 0 {
 				spare[c] = x.spareRow(c, pops)
 			}
-			a[spare[c]] -= sum
+			if spare[c] >= 0 {
+				a[spare[c]] -= sum
+			}
 		}
 		x.sums = sums
 	}
