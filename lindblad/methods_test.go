@@ -4,6 +4,7 @@ import (
 	"context"
 	"math"
 	"math/rand/v2"
+	"sync"
 	"testing"
 
 	"github.com/stretchr/testify/assert"
@@ -257,6 +258,29 @@ func TestMemory(t *testing.T) {
 	}
 }
 
+// Solvers of several goroutines share a layout and a memory; the bits stay.
+func TestWorkersShareAMemory(t *testing.T) {
+	l, x := twoLevels(t)
+	shared := NewMemory(1 << 14)
+	run := func(v *Solver, i int) []float64 {
+		return end(t, v, x, []Stretch{{Lasts: 1 + float64(i%17)/7, Coef: []float64{1, 0.3, 0.2}}}, []Node{{}})
+	}
+	var want [200][]float64
+	for i := range want {
+		want[i] = run(NewSolver(l, nil, Settings{}), i)
+	}
+	var group sync.WaitGroup
+	for range 4 {
+		group.Go(func() {
+			v := NewSolver(l, shared, Settings{})
+			for i := range want {
+				assert.Equal(t, want[i], run(v, i))
+			}
+		})
+	}
+	group.Wait()
+}
+
 func TestSteadyStates(t *testing.T) {
 	l, x := twoLevels(t)
 	v := NewSolver(l, nil, Settings{})
@@ -434,6 +458,7 @@ func TestBreaks(t *testing.T) {
 		term := func(e Envelope) []Term { return []Term{{Piece: 0, Amplitude: 2, Envelope: e, Rotor: -1}} }
 		v := NewSolver(l, nil, Settings{})
 		got := end(t, v, x, []Stretch{{Lasts: 6, Coef: coef, Terms: term(knots)}}, []Node{{}})
+		assert.Less(t, v.Stats().Rejected, 20) // a series from beyond a break costs some ten more
 		var parts []Stretch
 		var order []Node
 		for i := range len(knots) - 1 {
