@@ -73,7 +73,7 @@ func (s *Solver) measure(order []Node, times int, g *groupMap) {
 			continue
 		}
 		st := &s.stretches[n.Stretch]
-		g.exact = g.exact && s.methods[n.Stretch] == byPropagator
+		g.exact = g.exact && s.methods[n.Stretch] == byPropagator && !s.folds[n.Stretch]
 		g.plays += times
 		if !st.Ideal {
 			g.lasts += float64(times) * st.Lasts

@@ -410,6 +410,38 @@ func TestDisparateRates(t *testing.T) {
 	assert.InDelta(t, 1, l.trace(got), 1e-15)
 }
 
+// Terms that do not change join the coefficients, slopes too: against the same
+// terms hidden behind an envelope that is one, after a stretch that has turned
+// the rotor.
+func TestConstantTerms(t *testing.T) {
+	l, x := twoLevels(t)
+	var got [2][][]float64
+	for k := range got {
+		var e Envelope
+		if k == 1 {
+			e = constant(1)
+		}
+		first := Stretch{Lasts: 0.7, Coef: []float64{1, 0.3, 0.1}, Rotors: []float64{2}, Slopes: []Slope{{Rotors: []float64{1}}, {Lasts: 1}}}
+		second := Stretch{
+			Lasts: 1.3, Coef: []float64{0.2, 0.3, 0.1},
+			Terms:  []Term{{Piece: 0, Amplitude: 1.5, Phase: 0.4, Envelope: e, Rotor: 0}, {Piece: 1, Amplitude: 0.5, Envelope: e, Rotor: -1}},
+			Slopes: []Slope{{Coef: []float64{0, 1, 0}}, {Terms: []TermSlope{{Amplitude: 0.3, Phase: 0.2}, {}}}},
+		}
+		v := NewSolver(l, nil, Settings{Accuracy: 1e-12})
+		require.NoError(t, v.Run(background, x, nil, []Stretch{first, second}, []Node{{Stretch: 0}, {Group: []Node{{Stretch: 1}}, Repeat: 3}}, Record{Samples: 7, During: -1}, func(_ int, y []float64, dy [][]float64) error {
+			got[k] = append(got[k], append([]float64(nil), y...), append([]float64(nil), dy[0]...), append([]float64(nil), dy[1]...))
+			return nil
+		}))
+		assert.Equal(t, k == 0, v.Stats().Steps == 0)
+	}
+	require.Equal(t, len(got[1]), len(got[0]))
+	for i := range got[0] {
+		for j := range got[0][i] {
+			assert.InDelta(t, got[1][i][j], got[0][i][j], 1e-11)
+		}
+	}
+}
+
 // ramps is linear between its knots, one time unit apart.
 type ramps []float64
 

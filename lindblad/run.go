@@ -56,7 +56,9 @@ type Solver struct {
 	perTime float64
 
 	ctx       context.Context
-	stretches []Stretch
+	given     []Stretch
+	stretches []Stretch // with constant terms folded into the coefficients
+	folds     []bool
 	rec       Record
 	emit      func(sample int, x []float64, dx [][]float64) error
 	clock     clock
@@ -176,7 +178,7 @@ func (s *Solver) begin(ctx context.Context, x0 []float64, dx0 [][]float64, stret
 		return fmt.Errorf("lindblad: samples during stretch %d of %d", rec.During, len(stretches))
 	}
 	n := l.n
-	s.ctx, s.stretches, s.rec = ctx, stretches, rec
+	s.ctx, s.rec = ctx, rec
 	s.x, s.y, s.out = zeroed(s.x, (1+s.k)*n), sized(s.y, (1+s.k)*n), sized(s.out, (1+s.k)*n)
 	copy(s.x, x0)
 	for j, d := range dx0 {
@@ -205,6 +207,7 @@ func (s *Solver) begin(ctx context.Context, x0 []float64, dx0 [][]float64, stret
 	s.played = 0
 	s.trace = l.trace(x0)
 	s.watch = math.Inf(1)
+	s.unfold(stretches)
 	s.choose(order)
 	s.startClock(order)
 	return nil
@@ -340,6 +343,7 @@ func (s *Solver) playStretch(i int) error {
 	if s.played++; s.played%256 == 0 && s.ctx.Err() != nil {
 		return s.ctx.Err()
 	}
+	s.fold(i)
 	st := &s.stretches[i]
 	c := &s.clock
 	opens := s.rec.Samples > 0 && i == s.rec.During && !c.done

@@ -39,7 +39,11 @@ func (s *Solver) Steady(ctx context.Context, x0 []float64, stretches []Stretch, 
 		return fail(fmt.Sprintf("a steady state of %d coordinates is too large to solve for; ask for a finite time", n))
 	}
 	parts := make([][]float64, 1+s.k) // L and its slopes
-	if st := &stretches[order[0].Stretch]; len(order) == 1 && order[0].Group == nil && !st.Ideal && len(st.Terms) == 0 {
+	var only *Stretch
+	if len(order) == 1 && order[0].Group == nil {
+		only = &s.stretches[order[0].Stretch]
+	}
+	if st := only; st != nil && !st.Ideal && len(st.Terms) == 0 {
 		vals := s.needVals()
 		for q := range parts {
 			parts[q] = make([]float64, n*n)
@@ -112,6 +116,7 @@ func (s *Solver) orderMap(m *full, order []Node) (*full, error) {
 	for i := range order {
 		node := &order[i]
 		if node.Group == nil {
+			s.fold(node.Stretch)
 			st := &s.stretches[node.Stretch]
 			switch {
 			case len(st.Terms) == 0 && s.l.n <= denseLimit:
