@@ -30,7 +30,7 @@ func TestCheck(t *testing.T) {
 		table table.Table
 		want  string
 	}{
-		"name": {table.Table{Columns: []table.Column{{Name: "time"}, {Name: "time"}}}, `two columns are named "time"`},
+		"name":  {table.Table{Columns: []table.Column{{Name: "time"}, {Name: "time"}}}, `two columns are named "time"`},
 		"break": {table.Table{Columns: []table.Column{{Name: "time\nsignal"}}}, `"time\nsignal" has a line break`},
 		"length": {table.Table{Columns: []table.Column{{Name: "time", Values: []float64{1}}, {Name: "signal"}}},
 			`column "signal" has 0 rows, column "time" has 1`},
