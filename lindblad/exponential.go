@@ -200,7 +200,7 @@ func (x *full) conserve(pops, spare []int32) {
 				if spare[c] < 0 && sum != 0 {
 					spare[c] = x.spareRow(c, pops)
 				}
-				if spare[c] >= 0 { // else only slopes are here: their sum is rounding already
+				if spare[c] >= 0 {
 					a[spare[c]] -= sum
 				}
 			}
@@ -248,8 +248,10 @@ func (x *full) spareRow(c int, pops []int32) int32 {
 		if x.n > smallest && (int32(c) < x.lo[p/4] || int32(c) >= x.hi[p/4]) {
 			continue
 		}
-		if v := math.Abs(x.a[int(p)*x.m+c]); v > most {
-			most, at = v, p*int32(x.m)+int32(c)
+		for q := 0; q <= x.k; q++ { // a column may hold slopes only
+			if v := math.Abs(x.part(q)[int(p)*x.m+c]); v > most {
+				most, at = v, p*int32(x.m)+int32(c)
+			}
 		}
 	}
 	return at

@@ -442,6 +442,23 @@ func TestConstantTerms(t *testing.T) {
 	}
 }
 
+// Slopes at zero: of a decay by its rate, of a turn by its frequency, where the
+// propagator itself is the identity.
+func TestSlopesAtZero(t *testing.T) {
+	l, _ := twoLevels(t)
+	x := make([]float64, l.Len())
+	l.SetState(x, []complex128{0, 0, 0, 1})
+	const lasts = 1.7
+	st := Stretch{Lasts: lasts, Coef: []float64{0, 0, 0}, Slopes: []Slope{{Coef: []float64{0, 0, 1}}, {Coef: []float64{1, 0, 0}}}}
+	require.NoError(t, NewSolver(l, nil, Settings{}).Run(background, x, nil, []Stretch{st}, []Node{{}}, Record{During: -1}, func(_ int, y []float64, dy [][]float64) error {
+		assert.Equal(t, x, y)
+		assert.InDelta(t, -lasts, l.Population(dy[0], 1), 1e-15)
+		assert.InDelta(t, lasts, l.Population(dy[0], 0), 1e-15)
+		assert.InDelta(t, lasts/2, abs(l.Coherence(dy[1], 0, 1)), 1e-15) // |ρ_ge| = |sin Ωt|/2
+		return nil
+	}))
+}
+
 // ramps is linear between its knots, one time unit apart.
 type ramps []float64
 
