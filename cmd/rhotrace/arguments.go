@@ -38,6 +38,9 @@ func arrange(verb *cli.Command, words []string) (options, files []string, err er
 			return nil, nil, mistaken("%s: the option is given twice; give it once", name)
 		}
 		seen[flag.Names()[0]] = true
+		if valued && !takesValue(flag) {
+			return nil, nil, mistaken("%s takes no value; write %s alone", name, name)
+		}
 		options = append(options, word)
 		if valued || !takesValue(flag) {
 			continue
@@ -112,7 +115,7 @@ func unknownOption(verb *cli.Command, word string) error {
 		known = append(known, optionNames(flag)...)
 		main = append(main, dashed(flag.Names()[0]))
 	}
-	if near := spelling.Near(word, known); len(near) > 0 {
+	if near := spelling.Near(word, known); len(near) > 0 && len(word) > 2 {
 		return mistaken("%s: `rhotrace %s` has no such option; did you mean %s?", word, verb.Name, orList(near))
 	}
 	return mistaken("%s: `rhotrace %s` has no such option; it has %s; a file of that name goes behind --", word, verb.Name, list(main))

@@ -27,12 +27,15 @@ func plain(e *experiment.Experiment, t *table.Table) (*figure.Figure, error) {
 		return nil, mistaken("there is nothing to draw against: the file scans no dial and records no samples; add a scan, or samples = 201 in [record]")
 	}
 	f, err := figure.FromTable(t, figure.Choice{})
-	if err != nil {
-		var names []string
-		for _, c := range asked {
-			names = append(names, c.Name)
-		}
-		return nil, mistaken("a figure shows one or two scans, and here there are %s; take some out, or save the table with -o (%w)", list(names), err)
+	if err != nil && len(asked) > 2 {
+		return nil, mistaken("a figure shows one or two scans, and here are %s; take some out, or save the table with -o", list(names(asked)))
 	}
-	return f, nil
+	return f, err
+}
+
+func names(columns []table.Column) (list []string) {
+	for _, c := range columns {
+		list = append(list, c.Name)
+	}
+	return list
 }

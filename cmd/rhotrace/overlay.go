@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 
 	"rhotrace/cmd/rhotrace/internal/outfile"
 	"rhotrace/experiment"
@@ -13,9 +14,9 @@ import (
 	"rhotrace/io/table"
 )
 
-// measured reads the traces of --trace and says on standard error how. A file
-// that a block of the experiment names is read as that block says.
-func (s *session) measured(e *experiment.Experiment, files []string) (traces []*experiment.Trace, err error) {
+// measured reads the traces of --trace. A file that a block of the experiment
+// names is read as that block says.
+func measured(e *experiment.Experiment, files []string) (traces []*experiment.Trace, err error) {
 	if len(files) == 0 {
 		return nil, nil
 	}
@@ -38,12 +39,16 @@ func (s *session) measured(e *experiment.Experiment, files []string) (traces []*
 		}
 		traces = append(traces, given[len(given)-1])
 	}
+	return traces, nil
+}
+
+// note says how measured traces were read.
+func (s *session) note(traces []*experiment.Trace) {
 	for _, t := range traces {
-		for _, remark := range t.Remarks {
-			fmt.Fprintf(s.errOut, "rhotrace: note: %s: %s\n", t.File, oneLine(remark))
+		if len(t.Remarks) > 0 {
+			fmt.Fprintf(s.errOut, "rhotrace: note: %s: %s\n", t.File, oneLine(strings.Join(t.Remarks, "; ")))
 		}
 	}
-	return traces, nil
 }
 
 // overlaid makes the figure of a prediction with measured traces over it. Where
@@ -59,6 +64,9 @@ func overlaid(ctx context.Context, e *experiment.Experiment, t *table.Table, tra
 		return nil, err
 	}
 	panel := &f.Panels[0]
+	if len(panel.Lines) == 1 {
+		panel.Lines[0].Label = "predicted"
+	}
 	if slices.ContainsFunc(traces, func(t *experiment.Trace) bool { return len(t.At) > 0 }) {
 		panel.Lines = nil
 		for _, trace := range traces {
@@ -121,10 +129,14 @@ func choiceOf(trace *experiment.Trace) (figure.Choice, error) {
 	return choice, nil
 }
 
+// curves are those that a trace can be laid over.
 func curves(t *table.Table, choice figure.Choice) (*figure.Figure, error) {
+	if t.Column(choice.X) == nil {
+		return nil, mistaken("the trace lies along %s, which the file does not scan (or, for time, record in samples); make it do so", choice.X)
+	}
 	f, err := figure.FromTable(t, choice)
 	if err != nil {
-		return nil, mistaken("a trace of %s over %s cannot be laid over this prediction: %w", choice.Y[0], choice.X, err)
+		return nil, mistaken("the trace lies along %s alone, and here more is scanned; take the other scans out", choice.X)
 	}
 	return f, nil
 }

@@ -53,7 +53,7 @@ func (s *session) runPredict(c *cli.Context) error {
 	if err != nil {
 		return err
 	}
-	traces, err := s.measured(e, c.StringSlice("trace"))
+	traces, err := measured(e, c.StringSlice("trace"))
 	if err != nil {
 		return err
 	}
@@ -61,6 +61,7 @@ func (s *session) runPredict(c *cli.Context) error {
 	if err := keepInputs(e, c, saved, drawn); err != nil {
 		return err
 	}
+	s.note(traces)
 	outputs, err := s.open(saved, drawn)
 	if err != nil {
 		return err
@@ -223,8 +224,9 @@ func save(w io.Writer, t *table.Table, format string) error {
 
 // stream writes the table as an Arrow stream to standard output.
 func (s *session) stream(t *table.Table) error {
-	if err := arrowfile.WriteStream(s.out, t); err != nil {
-		return outputError(err)
+	err := arrowfile.WriteStream(s.out, t)
+	if own := s.out.Flush(); own != nil { // without what the writer put round it
+		return outputError(own)
 	}
-	return nil
+	return err
 }

@@ -79,11 +79,14 @@ func status(err error) int {
 // not there, is a mistake; a disk or a permission is the world outside.
 func unread(err error) error {
 	var number syscall.Errno
-	if err == nil || errors.As(err, &number) && number != syscall.EISDIR && !errors.Is(err, fs.ErrNotExist) {
+	if err == nil || errors.As(err, &number) && !slices.Contains(wrongName, number) {
 		return err
 	}
 	return mistake{err}
 }
+
+// wrongName are the errors of the operating system that a wrong name causes.
+var wrongName = []syscall.Errno{syscall.ENOENT, syscall.ENOTDIR, syscall.EISDIR}
 
 // outputError words an error of standard output.
 func outputError(err error) error {

@@ -1,23 +1,25 @@
 # Completion of rhotrace's command lines for bash.
 _rhotrace_complete() {
-    local IFS=$'\n' words=() word i
+    local IFS=$'\n' words=() n=0 i word previous="" last kept
     # bash cuts words at "=" and ":"; put them together again.
     for ((i = 1; i <= COMP_CWORD; i++)); do
         word=${COMP_WORDS[i]}
-        if [[ $word == [=:]* && ${#words[@]} -gt 0 || ${words[-1]-} == *[=:] ]]; then
-            words[-1]+=$word
+        if ((n > 0)) && [[ $word == [=:]* || $previous == *[=:] ]]; then
+            words[n - 1]+=$word
         else
-            words+=("$word")
+            words[n]=$word
+            ((n++))
         fi
+        previous=$word
     done
-    local last=${words[-1]}
+    last=${words[n - 1]}
     COMPREPLY=($("${COMP_WORDS[0]}" offer "${words[@]}" 2>/dev/null))
-    # What bash has cut off stands on the line already.
-    local kept=${last%"${COMP_WORDS[COMP_CWORD]}"}
-    [[ ${COMP_WORDS[COMP_CWORD]} == [=:] ]] && kept=$last
+    # The parts before the one at the cursor stand on the line already.
+    kept=$last
+    [[ $word == [=:] ]] || kept=${last%"$word"}
     COMPREPLY=("${COMPREPLY[@]#"$kept"}")
-    if [[ ${#COMPREPLY[@]} -gt 0 && ${COMPREPLY[0]} == *= ]]; then
-        compopt -o nospace
+    if [[ ${COMPREPLY[0]-} == *= ]]; then
+        compopt -o nospace 2>/dev/null
     fi
 }
 complete -o default -F _rhotrace_complete rhotrace
