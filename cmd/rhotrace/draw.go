@@ -33,9 +33,9 @@ func plain(e *experiment.Experiment, t *table.Table) (*figure.Figure, error) {
 	return f, err
 }
 
-func names(columns []table.Column) (list []string) {
+func names(columns []table.Column) (names []string) {
 	for _, c := range columns {
-		list = append(list, c.Name)
+		names = append(names, c.Name)
 	}
-	return list
+	return names
 }

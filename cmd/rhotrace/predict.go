@@ -152,33 +152,33 @@ func keepInputs(e *experiment.Experiment, c *cli.Context, outputs ...string) err
 	return nil
 }
 
-// outputs are the files in the making; nil where none is asked for.
-type outputs struct{ table, figure *outfile.File }
+// targets are the files in the making; nil where none is asked for.
+type targets struct{ table, figure *outfile.File }
 
 // open prepares the files, so that one that cannot be written is found before
 // the work.
-func (s *session) open(saved, drawn string) (outputs, error) {
-	var o outputs
+func (s *session) open(saved, drawn string) (targets, error) {
+	var o targets
 	var err error
 	if saved != "" && saved != "-" {
 		if o.table, err = outfile.Create(saved); err != nil {
-			return outputs{}, err
+			return targets{}, err
 		}
 		if d := o.table.Device(); d != nil && s.isTerminal(d) && formatOf(saved) != "csv" {
 			o.discard()
-			return outputs{}, mistaken("-o %s: Arrow is not written to a terminal; name a file, as in -o out.arrow", saved)
+			return targets{}, mistaken("-o %s: Arrow is not written to a terminal; name a file, as in -o out.arrow", saved)
 		}
 	}
 	if drawn != "" {
 		if o.figure, err = outfile.Create(drawn); err != nil {
 			o.discard()
-			return outputs{}, err
+			return targets{}, err
 		}
 	}
 	return o, nil
 }
 
-func (o outputs) list() (files []*outfile.File) {
+func (o targets) list() (files []*outfile.File) {
 	for _, f := range []*outfile.File{o.table, o.figure} {
 		if f != nil {
 			files = append(files, f)
@@ -187,9 +187,9 @@ func (o outputs) list() (files []*outfile.File) {
 	return files
 }
 
-func (o outputs) commit() error { return outfile.Commit(o.list()...) }
+func (o targets) commit() error { return outfile.Commit(o.list()...) }
 
-func (o outputs) discard() {
+func (o targets) discard() {
 	for _, f := range o.list() {
 		f.Discard()
 	}
