@@ -395,3 +395,30 @@ func TestWorkersDoNotChangeTheAnswer(t *testing.T) {
 		assert.Equal(t, one, many, name)
 	}
 }
+
+// What has no place in the text is inserted where it belongs, whatever the
+// layout of the file: comments, line ends and order stay.
+func TestTextInsertsWhatTheFileLeftOut(t *testing.T) {
+	for name, drive := range map[string]string{
+		"header":       "[drive.clock] # remark\nbetween = [\"g\", \"e\"]\nrabi = \"10 kHz\"\n",
+		"braces":       "[drive]\nclock = { between = [\"g\", \"e\"], rabi = \"10 kHz\" }\n",
+		"dotted":       "[drive]\nclock.between = [\"g\", \"e\"]\nclock.rabi = \"10 kHz\"\n",
+		"end of lines": "[drive.clock]\r\nbetween = [\"g\", \"e\"]\r\nrabi = \"10 kHz\"\r\n",
+	} {
+		text := strings.Replace(plain, "[drive.clock]\nbetween = [\"g\", \"e\"]\nrabi = \"10 kHz\"\n", drive, 1)
+		for _, mark := range []string{"", "\ufeff"} {
+			e, err := Read("x.toml", []byte(mark+text))
+			require.NoError(t, err, name)
+			turned, err := e.With(Turn{"drive.clock.phase", 0.5}, Turn{"drive.clock.detuning", 1e3}, Turn{"step.half.clock.scale", 0.7})
+			require.NoError(t, err, name)
+			again, err := Read("x.toml", turned.Text())
+			require.NoError(t, err, "%s\n%s", name, turned.Text())
+			for _, path := range []string{"drive.clock.phase", "drive.clock.detuning", "step.half.clock.scale"} {
+				want, _ := turned.Value(path)
+				got, err := again.Value(path)
+				require.NoError(t, err)
+				assert.Equal(t, want, got, "%s: %s", name, path)
+			}
+		}
+	}
+}

@@ -79,7 +79,7 @@ func TestDocument(t *testing.T) {
 		`17 start.populations."S1/2".y 0 |`,
 		`17 start.populations."S1/2".y.z 1 ü|'ü'`,
 		"18 start.lines 1 one\ntwo|\"\"\"\none\ntwo\"\"\"",
-	}, list[:len(list)])
+	}, list)
 	assert.True(t, root.at("start.populations").inline)
 	assert.False(t, root.at("start").inline)
 	assert.Same(t, root.at(`level."S1/2"`), root.at("level.S1/2"))

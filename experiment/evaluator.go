@@ -23,7 +23,6 @@ type layout struct {
 	memory  *lindblad.Memory
 	pairs   [][2]int // coherences kept
 	columns int      // numbers per state: populations, re and im of pairs, photons
-	fixed   bool     // the order repeats by constants only
 }
 
 func newLayout(e *Experiment, free []field, extra [][2]int) (*layout, error) {

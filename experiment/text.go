@@ -1,6 +1,7 @@
 package experiment
 
 import (
+	"bytes"
 	"math"
 	"sort"
 	"strings"
@@ -156,7 +157,7 @@ func (s *shape) shareEdits(values []float64, changed func(field) bool, skip map[
 }
 
 // insertion adds a value that has no place in the text: behind the header of
-// the nearest table above it, or inside its braces.
+// the nearest table above it, or behind the last entry inside its braces.
 func (s *shape) insertion(path, literal string) edit {
 	parts, err := splitKey(path)
 	if err != nil {
@@ -168,24 +169,36 @@ func (s *shape) insertion(path, literal string) edit {
 			continue
 		}
 		key := joinKey(parts[i:]...) + " = " + literal
-		if n.inline {
-			if len(n.children) > 0 {
-				key = ", " + key
-			}
-			return edit{n.end - 1, n.end - 1, key + " "}
-		}
-		if n.end > n.start { // it has a header
-			at := n.end
-			for at < len(s.text) && s.text[at] != '\n' {
-				at++
-			}
-			if at < len(s.text) {
-				return edit{at + 1, at + 1, key + "\n"}
-			}
-			return edit{at, at, "\n" + key + "\n"}
+		switch {
+		case n.inline && len(n.children) > 0:
+			at := n.children[len(n.children)-1].end
+			return edit{at, at, ", " + key}
+		case n.inline:
+			return edit{n.start + 1, n.start + 1, " " + key + " "}
+		case n.end > n.start: // it has a header
+			return s.line(n.end, key)
 		}
 	}
-	return edit{0, 0, joinKey(parts...) + " = " + literal + "\n"}
+	at := 0
+	if bytes.HasPrefix(s.text, []byte("\ufeff")) {
+		at = len("\ufeff")
+	}
+	return edit{at, at, joinKey(parts...) + " = " + literal + s.lineEnd()}
+}
+
+// line adds a line behind the one that the byte at stands in.
+func (s *shape) line(at int, text string) edit {
+	if i := bytes.IndexByte(s.text[at:], '\n'); i >= 0 {
+		return edit{at + i + 1, at + i + 1, text + s.lineEnd()}
+	}
+	return edit{len(s.text), len(s.text), s.lineEnd() + text + s.lineEnd()}
+}
+
+func (s *shape) lineEnd() string {
+	if bytes.Contains(s.text, []byte("\r\n")) {
+		return "\r\n"
+	}
+	return "\n"
 }
 
 // mergeInsertions joins insertions at one place into one edit.

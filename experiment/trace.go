@@ -394,7 +394,7 @@ func (e *Experiment) readTrace(t *trace, name, path string) (*Trace, error) {
 	if t.yError != "" {
 		out.Error = pick(t.yError)
 	}
-	if err := e.traceShotNumbers(t, out, pick); err != nil {
+	if err := e.traceShotNumbers(t, out, pick, data.Lines, keep); err != nil {
 		return nil, err
 	}
 	return out, e.tracePoints(t, out, pick, data.Lines, keep)
@@ -414,7 +414,7 @@ func finiteRows(columns map[string][]float64, rows int) (keep []int) {
 	return keep
 }
 
-func (e *Experiment) traceShotNumbers(t *trace, out *Trace, pick func(string) []float64) error {
+func (e *Experiment) traceShotNumbers(t *trace, out *Trace, pick func(string) []float64, lines, keep []int) error {
 	constant := none
 	switch {
 	case t.column != "":
@@ -432,7 +432,7 @@ func (e *Experiment) traceShotNumbers(t *trace, out *Trace, pick func(string) []
 	}
 	for i, n := range out.Shots {
 		if n <= 0 {
-			return fmt.Errorf("%s: row %d has %g shots; every row needs at least one", out.File, i+1, n)
+			return fmt.Errorf("%s:%d: has %g shots; every row needs at least one", out.File, lines[keep[i]], n)
 		}
 	}
 	if out.Is == "counts" && out.Shots == nil && (e.shape.readout == nil || e.shape.readout.what == readBright) {

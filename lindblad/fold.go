@@ -7,12 +7,15 @@ import "math"
 // stretch with no other terms is a constant one.
 
 // foldable tells whether all terms of a stretch are constant along every
-// direction.
+// direction. In a rotation in no time rotors cannot turn.
 func (st *Stretch) foldable() bool {
 	for i := range st.Terms {
 		t := &st.Terms[i]
 		if t.Envelope != nil {
 			return false
+		}
+		if st.Ideal {
+			continue
 		}
 		for j := range st.Slopes {
 			d := &st.Slopes[j]

@@ -8,7 +8,7 @@ import (
 // Stretch is a time during which the coefficients of the pieces keep one form.
 type Stretch struct {
 	Lasts  float64   // duration, ≥ 0
-	Ideal  bool      // a rotation in no time: the map is exp(Σ Coef L); Lasts is ignored
+	Ideal  bool      // a rotation in no time: the map is exp(L), terms taken where their rotors stand; Lasts is ignored
 	Coef   []float64 // one per piece: the constant part
 	Terms  []Term    // what depends on time
 	Rotors []float64 // angular frequencies of the running phases; nil: they stand still
@@ -83,10 +83,10 @@ func (l *Layout) checkStretch(i int, s *Stretch, rotors, directions int) error {
 	if s.Rotors != nil && len(s.Rotors) != rotors {
 		return fail("%d rotors, another stretch has %d", len(s.Rotors), rotors)
 	}
-	if s.Ideal && len(s.Terms) > 0 {
-		return fail("a rotation in no time cannot depend on time")
-	}
 	for j, t := range s.Terms {
+		if s.Ideal && t.Envelope != nil {
+			return fail("a rotation in no time cannot have an envelope")
+		}
 		if t.Piece < 0 || t.Piece >= len(l.pieces) {
 			return fail("term %d acts on piece %d of %d", j, t.Piece, len(l.pieces))
 		}
