@@ -31,6 +31,14 @@ type reader struct {
 	warnings []string
 }
 
+// top finds a table at the top of the file; nil when there is none, or no file.
+func (r *reader) top(name string) *node {
+	if r.e.shape.root == nil {
+		return nil
+	}
+	return r.e.shape.root.child(name)
+}
+
 func (r *reader) fail(n *node, path, format string, args ...any) {
 	if r.first == nil {
 		r.first = r.errorAt(n, path, format, args...)
@@ -234,6 +242,7 @@ func (k *keys) setting(key string, dst *float64, what kind, doc string) *node {
 		d := Dial{Low: what.low, High: what.high, Off: what.off, Whole: what.whole, dimension: what.dimension}
 		if wrong := d.check(v); wrong != "" {
 			k.r.fail(n, n.path, "%s", wrong)
+			return n
 		}
 		*dst = v
 	}

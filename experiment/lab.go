@@ -51,10 +51,11 @@ const (
 // blocks visits [group.NAME] tables in the order of the file.
 func (r *reader) blocks(group, doc string, read func(k *keys, name string, n *node)) {
 	if r.listing {
+		r.manual = append(r.manual, Key{Path: group + ".NAME", Takes: "table", Doc: doc})
 		read(r.keys(nil, group+".NAME"), "NAME", nil)
 		return
 	}
-	top := r.e.shape.root.child(group)
+	top := r.top(group)
 	if top == nil {
 		return
 	}

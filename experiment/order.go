@@ -32,7 +32,7 @@ func parseOrder(text string, step func(name string) (int, error), number func(na
 	p := orderParser{tokens: orderTokens(text), step: step, number: number}
 	nodes, err := p.list(0)
 	if err == nil && p.at < len(p.tokens) {
-		err = fmt.Errorf("a closing bracket has no opening one")
+		err = fmt.Errorf("a closing bracket has no opening one; take it out or put a ( before the group")
 	}
 	if err == nil && len(nodes) == 0 {
 		err = fmt.Errorf("the order is empty; name the steps in order, as in \"half dark half\"")
@@ -100,7 +100,7 @@ func (p *orderParser) item(depth int) (orderNode, error) {
 			return n, err
 		}
 		if p.peek() != ")" {
-			return n, fmt.Errorf("an opening bracket is never closed")
+			return n, fmt.Errorf("an opening bracket is never closed; put a ) behind the group")
 		}
 		if len(group) == 0 {
 			return n, fmt.Errorf("a pair of brackets holds no step")
@@ -210,7 +210,7 @@ func uses(nodes []orderNode, used []bool) {
 
 func (r *reader) readSequence() {
 	s := r.e.shape
-	top := s.root.child("sequence")
+	top := r.top("sequence")
 	k := r.keys(top, "sequence")
 	if top != nil && top.kind != tableNode {
 		r.fail(top, "sequence", "must be a table: write [sequence] with order = \"…\"")
@@ -287,7 +287,7 @@ type start struct {
 
 func (r *reader) readStart() {
 	s := &r.e.shape.start
-	top := r.e.shape.root.child("start")
+	top := r.top("start")
 	k := r.keys(top, "start")
 	pops := k.table("populations", "table of levels", "share of each level; they sum to one")
 	phases := k.table("phases", "table of levels", "phase of each level of one superposition")

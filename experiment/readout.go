@@ -32,7 +32,7 @@ const (
 )
 
 func (r *reader) readReadout() {
-	top := r.e.shape.root.child("readout")
+	top := r.top("readout")
 	if top == nil && !r.listing {
 		return
 	}

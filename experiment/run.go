@@ -3,6 +3,7 @@ package experiment
 import (
 	"context"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"math"
 	"runtime"
@@ -45,7 +46,7 @@ func RunWith(ctx context.Context, e *Experiment, set Settings) (*table.Table, er
 		if err != nil {
 			return points.locate(e, i, err)
 		}
-		return out.put(v, i, values, st)
+		return points.locate(e, i, out.put(v, i, values, st))
 	})
 	if err != nil {
 		return nil, err
@@ -180,7 +181,7 @@ func (p *points) values(base []float64, i int) []float64 {
 
 // locate says at which point of the scan an error arose.
 func (p *points) locate(e *Experiment, i int, err error) error {
-	if len(p.dials) == 0 || err == context.Canceled {
+	if err == nil || len(p.dials) == 0 || errors.Is(err, context.Canceled) {
 		return err
 	}
 	var at []string
@@ -263,7 +264,7 @@ func (r *rows) put(v *evaluator, i int, values []float64, st *states) error {
 		}
 		state := st.values[k]
 		for a := range s.levels {
-			add(state[a])
+			add(tidy(state[a]))
 		}
 		for j := range s.record.coherences {
 			add(state[len(s.levels)+2*j])
@@ -274,6 +275,9 @@ func (r *rows) put(v *evaluator, i int, values []float64, st *states) error {
 			if math.IsNaN(y) || math.IsInf(y, 0) {
 				return &Error{File: s.file, Path: "readout.among", What: "the levels among which the signal is read are empty, so there is nothing to divide by"}
 			}
+			if o.what == readBright {
+				y = tidy(y)
+			}
 			add(y)
 			if o.shots != none {
 				add(o.deviation(y, v.settler.x))
@@ -281,6 +285,15 @@ func (r *rows) put(v *evaluator, i int, values []float64, st *states) error {
 		}
 	}
 	return nil
+}
+
+// tidy takes away what rounding leaves below zero of a probability: people and
+// logarithms dislike −2e-16.
+func tidy(p float64) float64 {
+	if p < 0 && p > -1e-12 {
+		return 0
+	}
+	return p
 }
 
 // averagesOf reads columns of a state as dual numbers (slope nil: zero).

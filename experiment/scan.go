@@ -46,6 +46,7 @@ func (r *reader) readScans() {
 			k.fail(values, "values", "stands beside from, to or points; give one or the other")
 		case values != nil:
 			k.listed(s, dial, path, values)
+		case points == 0 && pointsNode != nil: // said already
 		case from == nil || to == nil || pointsNode == nil:
 			k.fail(nil, "", "give from, to and points, or values = [ … ]")
 		default:
@@ -67,7 +68,7 @@ func (r *reader) readScans() {
 		rows *= float64(len(s.rows))
 	}
 	if rows *= float64(max(1, r.e.shape.record.samples)); rows > mostRows {
-		r.fail(r.e.shape.root.child("scan"), "scan", "the table would have %.3g rows; at most %d are allowed", rows, mostRows)
+		r.fail(r.top("scan"), "scan", "the table would have %.3g rows; at most %d are allowed", rows, mostRows)
 	}
 }
 
@@ -193,7 +194,7 @@ type record struct {
 func (r *reader) readRecord() {
 	rec := &r.e.shape.record
 	rec.during = -1
-	top := r.e.shape.root.child("record")
+	top := r.top("record")
 	k := r.keys(top, "record")
 	k.whole("samples", &rec.samples, number.from(0).to(mostRows).or(0), "0: the end only; n > 1: n equally spaced times")
 	list := k.find("coherences", "\"all\", \"none\" or list of pairs", "coherences in the table, pairs a:b, a before b in the file")

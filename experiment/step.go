@@ -94,7 +94,7 @@ func (r *reader) checkBlockNames() {
 		taken[key] = "a key of a step"
 	}
 	for _, group := range []string{"drive", "shift", "decay", "dephasing"} {
-		top := r.e.shape.root.child(group)
+		top := r.top(group)
 		if top == nil {
 			continue
 		}
