@@ -150,6 +150,7 @@ func (v *evaluator) base(x []dual.Number) {
 		set.On = false
 		set.Rabi, set.Detuning, set.Phase = x[d.rabi], x[d.detuning], x[d.phase]
 		set.Linewidth = optional(x, d.linewidth, 0)
+		set.Pulse, set.Quadrature, set.Chirped = nil, nil, false
 		for j, f := range d.elements {
 			set.Elements[j] = optional(x, f, 1)
 		}
@@ -174,6 +175,7 @@ func (v *evaluator) base(x []dual.Number) {
 	}
 	for i, d := range s.shifts {
 		v.weigh(&v.settings.Shifts[i], x[d.size], d.weights, x)
+		v.settings.Shifts[i].Pulse = nil
 	}
 }
 
@@ -232,11 +234,19 @@ func (v *evaluator) fill(i, direction int, x []dual.Number) {
 	default:
 		v.settings.Lasts = x[st.lasts]
 		first := &v.settings.Drives[st.on[0]]
-		gain := 0.0
-		if st.fileLast > 0 {
-			gain = 1 / (st.turnRate * st.fileLast)
+		first.Rabi = dual.Mul(first.Rabi, dual.Scale(1/(st.turnRate*st.integral), x[st.area]))
+	}
+	for _, d := range st.on {
+		set := &v.settings.Drives[d]
+		set.Pulse, set.Quadrature = st.courseOf(d).pulses(x, v.settings.Lasts)
+		if f := st.chirpOf(d); f != none {
+			set.Chirped, set.Chirp = true, x[f]
 		}
-		first.Rabi = dual.Mul(first.Rabi, dual.Scale(gain, x[st.area]))
+	}
+	for k := range st.changes {
+		if ch := &st.changes[k]; ch.kind == shiftBlock && ch.course.given {
+			v.settings.Shifts[ch.index].Pulse, _ = ch.course.pulses(x, v.settings.Lasts)
+		}
 	}
 	v.lab.Fill(out, &v.settings, direction)
 }
@@ -251,6 +261,10 @@ func (v *evaluator) apply(ch *change, x []dual.Number) {
 		d.Rabi = dual.Mul(d.Rabi, optional(x, ch.scale, 1))
 	case shiftBlock:
 		d := &v.settings.Shifts[ch.index]
+		if ch.course.given {
+			d.Extra = optional(x, ch.size, 0)
+			return // its course is filled in with the duration
+		}
 		d.Size = dual.Add(d.Size, optional(x, ch.size, 0))
 	case decayBlock:
 		d := &v.settings.Decays[ch.index]

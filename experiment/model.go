@@ -59,6 +59,13 @@ func (r *reader) checkModel() {
 				"is on a drive that is part of a closed loop, where the phase of one source cannot be told from the others'; use a dephasing of the level between two beams of one laser, or a noise on the detuning")
 		}
 	}
+	for _, st := range s.steps {
+		for _, d := range st.on {
+			if f := st.chirpOf(d); f != none && layout.Frames.InLoop(d) {
+				r.fail(s.nodes[f], s.dials[f].Path, "is on a drive that is part of a closed loop, where a chirp is not possible yet; chirp a drive outside loops")
+			}
+		}
+	}
 	r.warnLoops(&layout.Frames)
 }
 

@@ -344,6 +344,9 @@ func (r *rows) table(stats Statistics, warnings []string) (*table.Table, error) 
 	t.Meta[table.MetaExperiment] = string(r.e.Text())
 	t.Meta[table.MetaVersion] = Version
 	t.Meta[table.MetaStatistics] = string(statistics)
+	for name, text := range r.e.filesBeside() {
+		t.Meta[table.MetaFile+name] = string(text)
+	}
 	t.Warnings = warnings
 	return t, nil
 }

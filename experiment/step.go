@@ -15,11 +15,12 @@ type step struct {
 	ideal bool // lasts = "0 s" beside area: a rotation in no time
 
 	changes []change
+	course  course // of all drives that have none of their own
 
 	// Frozen when the file is read, so that turning the Rabi frequency
 	// afterwards leaves a duration alone, as a pulse generator does.
 	turnRate float64 // 2π rabi scale of the first drive (rad/s) in the file
-	fileLast float64 // lasts in the file, s; 0 unless area and lasts are both given
+	integral float64 // ∫ of the course in the file, s; 0 unless area and lasts are both given
 }
 
 // change is what one step does to a drive, shift, decay or dephasing while it
@@ -27,9 +28,10 @@ type step struct {
 type change struct {
 	kind                   blockKind
 	index                  int
-	phase, detuning, scale field // drive
-	size                   field // shift
-	rate                   field // decay, dephasing
+	phase, detuning, scale field  // drive
+	size                   field  // shift
+	rate                   field  // decay, dephasing
+	course                 course // drive, shift
 }
 
 type blockKind int
@@ -124,11 +126,13 @@ func (r *reader) readSteps() {
 			seen[c.text] = true
 		}
 		r.duration(k, s)
+		r.course(k, &s.course, s.name, true)
 		if r.listing {
 			r.listChanges(k)
 			return
 		}
 		r.readChanges(k, s)
+		r.checkCourses(k, s)
 		k.done(append(append([]string(nil), stepKeys...), r.e.shape.blockNames()...)...)
 		r.e.shape.steps = append(r.e.shape.steps, s)
 	})
@@ -185,7 +189,7 @@ func (r *reader) readChanges(k *keys, s *step) {
 			continue
 		}
 		sub := r.keys(c, c.path)
-		ch := change{kind: kind, index: index, phase: none, detuning: none, scale: none, size: none, rate: none}
+		ch := change{kind: kind, index: index, phase: none, detuning: none, scale: none, size: none, rate: none, course: noCourse}
 		r.change(sub, &ch, isOn[index] && kind == driveBlock, c.key)
 		sub.done()
 		s.changes = append(s.changes, ch)
@@ -197,7 +201,7 @@ func (r *reader) readChanges(k *keys, s *step) {
 		if !isOn[d] {
 			continue
 		}
-		ch := change{kind: driveBlock, index: d, phase: none, detuning: none, size: none, rate: none}
+		ch := change{kind: driveBlock, index: d, phase: none, detuning: none, size: none, rate: none, course: noCourse}
 		ch.scale = r.e.addDial(joinPath(k.path, r.e.shape.drives[d].name)+".scale", number.from(0), scaleDoc, 1, nil)
 		s.changes = append(s.changes, ch)
 	}
@@ -211,7 +215,7 @@ func (r *reader) change(sub *keys, ch *change, on bool, name string) {
 	case driveBlock:
 		sub.number("detuning", &ch.detuning, frequency, "detuning added in this step; the frame follows the drive")
 		if !on && sub.n != nil {
-			for _, key := range []string{"phase", "scale"} {
+			for _, key := range []string{"phase", "scale", "shape", "chirp"} {
 				if n := sub.n.child(key); n != nil {
 					sub.fail(n, key, "has no effect because the drive is off in this step; name %q in on or leave it out", name)
 					return
@@ -222,8 +226,10 @@ func (r *reader) change(sub *keys, ch *change, on bool, name string) {
 		}
 		sub.number("phase", &ch.phase, angle, "phase added in this step")
 		sub.number("scale", &ch.scale, number.from(0).or(1), scaleDoc)
+		r.course(sub, &ch.course, name, true)
 	case shiftBlock:
 		sub.number("size", &ch.size, frequency, "shift added in this step")
+		r.course(sub, &ch.course, name, false)
 	case decayBlock, dephasingBlock:
 		sub.number("rate", &ch.rate, rate.offAt(0), "rate added in this step")
 	}
@@ -256,7 +262,12 @@ func (r *reader) freeze() {
 			r.fail(n, e.shape.dials[s.area].Path, "cannot be reached: the Rabi frequency of drive %q is zero", d.name)
 		}
 		if s.lasts != none {
-			s.fileLast = e.values[s.lasts]
+			if e.values[s.lasts] > 0 {
+				s.integral = s.integralOf(x)
+			}
+			if s.integral <= 0 {
+				r.fail(n, e.shape.dials[s.area].Path, "cannot be reached: the pulse has no area within lasts")
+			}
 		}
 	}
 }

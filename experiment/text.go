@@ -31,7 +31,7 @@ func (s *shape) write(values []float64, freeze bool) ([]byte, error) {
 	}
 	skip := map[field]bool{}
 	if freeze {
-		frozen, err := s.frozenEdits(values, changed, skip)
+		frozen, err := s.frozenEdits(values, skip)
 		if err != nil {
 			return nil, err
 		}
@@ -77,7 +77,7 @@ func tomlNumber(text string) string {
 
 // frozenEdits writes durations and areas so that reading them again gives what
 // the experiment has now.
-func (s *shape) frozenEdits(values []float64, changed func(field) bool, skip map[field]bool) ([]edit, error) {
+func (s *shape) frozenEdits(values []float64, skip map[field]bool) ([]edit, error) {
 	e := &Experiment{shape: s, values: values}
 	x, err := e.settled(values)
 	if err != nil {
@@ -85,7 +85,7 @@ func (s *shape) frozenEdits(values []float64, changed func(field) bool, skip map
 	}
 	var edits []edit
 	for _, st := range s.steps {
-		if st.area == none || !s.areaMoves(st, values, changed) {
+		if st.area == none || !s.areaMoves(st, values) {
 			continue
 		}
 		n := s.nodes[st.area]
@@ -100,8 +100,8 @@ func (s *shape) frozenEdits(values []float64, changed func(field) bool, skip map
 			key := lineOfKey(s.text, n)
 			edits = append(edits, edit{key, n.end, `lasts = "` + quantity.Format(lasts, quantity.Time) + `"`})
 		default: // the area that the amplitude comes to
-			amplitude := now * values[st.area] / (st.turnRate * st.fileLast)
-			edits = append(edits, edit{n.start, n.end, s.literal(st.area, amplitude*values[st.lasts])})
+			amplitude := now * values[st.area] / (st.turnRate * st.integral)
+			edits = append(edits, edit{n.start, n.end, s.literal(st.area, amplitude*st.integralOf(x))})
 		}
 		skip[st.area] = true
 	}
@@ -110,7 +110,7 @@ func (s *shape) frozenEdits(values []float64, changed func(field) bool, skip map
 
 // areaMoves reports whether reading the file again would change the duration
 // or the amplitude of the step.
-func (s *shape) areaMoves(st *step, values []float64, changed func(field) bool) bool {
+func (s *shape) areaMoves(st *step, values []float64) bool {
 	file, err := (&Experiment{shape: s, values: s.original}).settled(s.original)
 	if err != nil {
 		return false
@@ -121,7 +121,7 @@ func (s *shape) areaMoves(st *step, values []float64, changed func(field) bool) 
 	}
 	rabi := s.drives[st.on[0]].rabi
 	moved := now[rabi].Real != file[rabi].Real || st.scaleOf(now) != st.scaleOf(file)
-	return moved || st.lasts != none && changed(st.lasts)
+	return moved || st.lasts != none && st.integralOf(now) != st.integral
 }
 
 // shareEdits rewrites tables whose first entry takes what the others leave.

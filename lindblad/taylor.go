@@ -365,12 +365,38 @@ func (w *taylor) step(perTime float64) float64 {
 		last := math.Max(c, b*ratio/2)
 		scale := 1.0
 		if q > 0 {
-			scale = math.Max(largest(w.poly.part(0, q, n)), 1e-300)
-			if !math.IsInf(h, 1) {
-				scale = math.Max(scale, h*largest(w.poly.part(1, q, n)))
+			// A tangent may set out from zero, and slowly: its size is that of
+			// its largest term within the step that the state allows.
+			scale = largest(w.poly.part(0, q, n))
+			if f := h; !math.IsInf(h, 1) {
+				for p := 1; p < k && f > 0; p++ {
+					scale = math.Max(scale, f*largest(w.poly.part(p, q, n)))
+					f *= h
+				}
+			}
+			if scale == 0 {
+				continue
 			}
 		}
+		if b < 0.05*math.Sqrt(a*c) || a == 0 || c < 1e-3*b*b/a {
+			h = math.Min(h, w.stepByRoots(q, perTime*scale, scale))
+			continue
+		}
 		h = math.Min(h, math.Min(0.9*math.Pow(perTime*scale/(last*ratio), 1/float64(k)), 0.7/ratio))
+	}
+	return h
+}
+
+// stepByRoots is the step for a series with gaps (a state that sets out along
+// a symmetry has them): each of the last orders p that is there must by itself
+// keep p·c_p·h^(p−1) small.
+func (w *taylor) stepByRoots(q int, perTime, scale float64) float64 {
+	h := math.Inf(1)
+	k := w.poly.order
+	for p := max(2, k-7); p <= k; p++ {
+		if c := largest(w.poly.part(p, q, w.l.n)); c > 0 {
+			h = math.Min(h, math.Min(0.9*math.Pow(perTime/(float64(p)*c), 1/float64(p-1)), 0.7*math.Pow(scale/c, 1/float64(p))))
+		}
 	}
 	return h
 }

@@ -32,11 +32,9 @@ type Pulse struct {
 	Samples    []float64   // Sampled: values at Times
 }
 
-// constant reports whether the pulse is one throughout, also when its ramps
-// are turned.
-func (p *Pulse) constant() bool {
-	return p == nil || p.Shape == Square && p.Rise == dual.Number{} && p.Fall == dual.Number{}
-}
+// constant reports whether there is no course: what it says does not depend on
+// the numbers, so that values and slopes are laid out alike.
+func (p *Pulse) constant() bool { return p == nil }
 
 // envelope is a pulse for the engine: its course or the slope of its course.
 type envelope struct {
@@ -239,9 +237,6 @@ func (p *Pulse) interval(u float64) int {
 // Integral is ∫ of the course over the stretch (s): the area of a pulse over
 // 2π × its peak Rabi frequency.
 func (p *Pulse) Integral() float64 {
-	if p.constant() {
-		return p.Lasts.Real
-	}
 	t, w := p.Lasts.Real, p.Width.Real
 	switch p.Shape {
 	case Gaussian:

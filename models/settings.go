@@ -27,6 +27,11 @@ type DriveSettings struct {
 	Phase     dual.Number   // φ, rad
 	Linewidth dual.Number   // Lorentzian full width of the source, Hz
 	Elements  []dual.Number // one per pair: its Rabi frequency is element × Rabi
+	// Pulse is the course of the Rabi frequency, nil: constant. Quadrature is
+	// a second course a quarter of a cycle ahead, for waveforms with a phase.
+	Pulse, Quadrature *Pulse
+	Chirped           bool
+	Chirp             dual.Number // when Chirped: total change of the frequency over the stretch, centred on Detuning, Hz
 }
 
 // DecaySettings are the numbers of a decay.
@@ -41,6 +46,9 @@ type DecaySettings struct {
 type WeightSettings struct {
 	Size    dual.Number
 	Weights []dual.Number
+	// A shift may also take a course: Extra × Pulse is added to Size.
+	Extra dual.Number
+	Pulse *Pulse
 }
 
 var (
@@ -85,12 +93,22 @@ func (l *Layout) Fill(dst *lindblad.Stretch, s *Settings, direction int) {
 	for n := range l.Model.Drives {
 		d := &s.Drives[n]
 		for j := range d.Elements {
-			if d.On && l.loop(n, j) < 0 {
+			if d.On && l.loop(n, j) < 0 && d.Pulse.constant() {
 				l.couple(n, j, coupled(d, j, d.Rabi), d.Phase, part, coef)
 			}
 		}
 	}
-	l.fillLoops(dst, s, direction)
+	t := terms{l, dst, direction}
+	t.energies(s)
+	for n := range l.Model.Drives {
+		d := &s.Drives[n]
+		for j := range d.Elements {
+			if rotor := l.loop(n, j); d.On && (rotor >= 0 || !d.Pulse.constant()) {
+				t.couple(n, j, rotor, coupled(d, j, d.Rabi), d)
+			}
+		}
+	}
+	l.fillRotors(dst, s, direction)
 }
 
 // FillRotation writes the ideal rotation by area (rad) of one drive: the map
@@ -116,7 +134,8 @@ func (l *Layout) FillRotation(dst *lindblad.Stretch, s *Settings, drive int, are
 		if l.loop(drive, j) < 0 {
 			l.couple(drive, j, coupled(d, j, turns), d.Phase, part, coef)
 		} else {
-			l.addLoop(dst, drive, j, coupled(d, j, turns), d.Phase, direction)
+			bare := DriveSettings{Phase: d.Phase}
+			terms{l, dst, direction}.couple(drive, j, l.loop(drive, j), coupled(d, j, turns), &bare)
 		}
 	}
 	l.fillRotors(dst, s, direction)
@@ -247,31 +266,8 @@ func (l *Layout) fillDampings(s *Settings, part func(dual.Number) float64, coef 
 	}
 }
 
-// fillLoops writes what turns with a left-over phase e^{−iθ}, dθ/dt = 2πδ.
-func (l *Layout) fillLoops(dst *lindblad.Stretch, s *Settings, direction int) {
-	for _, loop := range l.Frames.Loops {
-		if d := &s.Drives[loop.Drive]; d.On {
-			l.addLoop(dst, loop.Drive, loop.Pair, coupled(d, loop.Pair, d.Rabi), d.Phase, direction)
-		}
-	}
-	l.fillRotors(dst, s, direction)
-}
-
-// addLoop adds the terms x cos(θ + φ) and y sin(θ + φ) of a loop's pair. The
-// order in which pairs come is the same for every direction.
-func (l *Layout) addLoop(dst *lindblad.Stretch, drive, pair int, half, phase dual.Number, direction int) {
-	c := l.coupling[l.Model.Drives[drive].Pairs[pair]]
-	rotor := l.loop(drive, pair)
-	if direction >= 0 {
-		t := lindblad.TermSlope{Amplitude: half.Emag, Phase: phase.Emag}
-		dst.Slopes[direction].Terms = append(dst.Slopes[direction].Terms, t, t)
-		return
-	}
-	dst.Terms = append(dst.Terms,
-		lindblad.Term{Piece: c.x, Amplitude: half.Real, Phase: phase.Real, Rotor: rotor},
-		lindblad.Term{Piece: c.y, Amplitude: half.Real, Phase: phase.Real - math.Pi/2, Rotor: rotor})
-}
-
+// fillRotors writes how fast the phases turn that the frames leave over:
+// dθ/dt = 2πδ.
 func (l *Layout) fillRotors(dst *lindblad.Stretch, s *Settings, direction int) {
 	for i, loop := range l.Frames.Loops {
 		delta := s.Drives[loop.Drive].Detuning
