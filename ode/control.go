@@ -17,7 +17,7 @@ const (
 	safety = 0.9
 	beta   = 0.2
 	shrink = 0.2  // the least factor of one step to the next
-	grow   = 6.0  // the largest
+	grow   = 1.5  // the largest: an estimate that passes through zero must not start a leap
 	halve  = 0.5  // after a veto
 	tenth  = 0.1  // after a state that is not finite
 	least  = 1e-4 // error taken to stand before the first step, and at least
@@ -74,9 +74,10 @@ func (s *Solver) allowed(h float64) (bound, power float64) {
 	return s.set.Accuracy, p
 }
 
-// firstStep returns the size of the first step by section II.4: a small step of
-// Euler's method shows the second derivative, and the larger of both derivatives
-// sets a step whose error would be about Accuracy/100. k₀ holds the slope at s.t.
+// firstStep returns the size of the first step, much as in section II.4. A small
+// step of Euler's method shows the second derivative; τ = |dy/dt|/|d²y/dt²| is
+// taken for the time scale, so that |dy/dt| τ (h/τ)^p = Accuracy/100. Unlike the
+// formula there it does not depend on the unit of time. k₀ holds the slope at s.t.
 func (s *Solver) firstStep(f Func) (float64, error) {
 	span := math.Abs(s.span)
 	most := math.Min(span, s.set.LargestStep)
@@ -100,17 +101,19 @@ func (s *Solver) firstStep(f Func) (float64, error) {
 	if !finite(bend) {
 		return h, nil
 	}
-	better := 1e-3 * span
-	if d := math.Max(slope, bend); d > 1e-15*s.set.Accuracy {
-		better = math.Pow(0.01*s.set.Accuracy/d, 1/float64(s.tab.Order))
+	h *= 100
+	if slope = math.Max(slope, bend*h/100); bend > 0 {
+		scale := slope / bend
+		h = math.Min(h, scale*math.Pow(0.01*s.set.Accuracy/(slope*scale), 1/float64(s.tab.Order)))
 	}
-	return math.Min(math.Min(100*h, better), most), nil
+	return math.Min(h, most), nil
 }
 
-// smallest returns the size below which a step from t is lost in rounding.
+// smallest returns the size below which a step is lost in the rounding of t, or
+// could not reach the last time in any number of steps that a computer takes.
 func (s *Solver) smallest() float64 {
 	t := math.Abs(s.t)
-	return math.Max(8*(math.Nextafter(t, math.Inf(1))-t), 1e-18*math.Abs(s.span))
+	return math.Max(8*(math.Nextafter(t, math.Inf(1))-t), 1e-15*math.Abs(s.span))
 }
 
 func finite(x float64) bool { return x-x == 0 }
