@@ -109,7 +109,7 @@ func (r *reader) readDrives() {
 			d.pairs, d.elements = []models.Pair{p}, []field{none}
 		}
 		k.number("rabi", &d.rabi, frequency.from(0).need(), "Rabi frequency Ω/2π")
-		k.number("detuning", &d.detuning, frequency.or(0), "detuning ν_drive − ν_transition")
+		k.number("detuning", &d.detuning, frequency.or(0), "detuning of the drive from its transition")
 		k.number("phase", &d.phase, angle.or(0), "phase φ of the field cos(2πνt + φ)")
 		k.number("linewidth", &d.linewidth, frequency.from(0).offAt(0), "Lorentzian full width of the source (white frequency noise)")
 		k.done()
