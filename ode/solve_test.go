@@ -91,7 +91,7 @@ func TestConvergence(t *testing.T) {
 // Accuracy with PerTime, to Accuracy times the number of steps without. The
 // others enlarge errors made on the way: A3 by up to e², its y swings between
 // 1/e and e; A4 by up to 5; orbits drift. The factor 10 covers them at these
-// accuracies (7.1 is the largest seen, D5 with the pair 5(4)).
+// accuracies (6.7 is the largest seen, D5 with the pair 5(4)).
 func TestTrueError(t *testing.T) {
 	for _, tab := range Tableaux {
 		for _, p := range odetest.Problems() {
