@@ -100,3 +100,39 @@ order = "p"
 	require.NoError(t, err)
 	assert.InDelta(t, 0.675231906655777, out.Column("population.g").Values[0], 2.5e-3) // Ω/(αT) = 0.5/200
 }
+
+// A drive without rotating-wave approximation, at a quarter of the carrier:
+// problem e of the project's high-precision vectors (Taylor series of the
+// equation with 90 digits, two orders and steps, agreeing to 1e-64): ω = ω₀ = 1,
+// Ω = 1/4, Γ = 1/256.
+func TestDriveAsItIs(t *testing.T) {
+	text := `format = 1
+[level.g]
+energy = "0 Hz"
+[level.e]
+energy = "0.15915494309189535 MHz"
+[drive.d]
+between = ["g", "e"]
+rabi = "0.039788735772973836 MHz"
+frame = "lab"
+[decay.x]
+from = "e"
+to = "g"
+rate = "0.00390625 /us"
+[step.p]
+on = ["d"]
+lasts = "10 us"
+[sequence]
+order = "p"
+[scan.t]
+dial = "step.p.lasts"
+values = ["10 us", "40 us", "100 us"]
+`
+	e, err := Read("x.toml", []byte(text))
+	require.NoError(t, err)
+	out, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	for i, want := range []float64{0.0840853442346012, 0.0950778325840683, 0.856391621705812428} {
+		assert.InDelta(t, want, out.Column("population.g").Values[i], 1e-8)
+	}
+}

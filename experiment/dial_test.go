@@ -151,6 +151,43 @@ bright="r"
 coherences="all"
 `
 
+// bareDrive has a drive without rotating-wave approximation.
+const bareDrive = `
+format = 1
+[level.g]
+energy = "0.3 MHz"
+[level.e]
+energy = "10.3 MHz"
+[drive.d]
+between = ["g", "e"]
+rabi = "2 MHz"
+detuning = "0.1 MHz"
+phase = "20 deg"
+frame = "lab"
+[decay.x]
+from = "e"
+to = "g"
+rate = "0.1 /us"
+[step.p]
+on = ["d"]
+lasts = "700 ns"
+[step.q]
+on = ["d"]
+lasts = "300 ns"
+shape = "sine-squared"
+[step.q.d]
+phase = "30 deg"
+detuning = "0.3 MHz"
+[step.w]
+lasts = "50 ns"
+[sequence]
+order = "p w q"
+[readout]
+bright = "e"
+[record]
+coherences = "all"
+`
+
 const readBoth = `
 [readout]
 bright = { e = 0.9, m = 0.2 }
@@ -180,7 +217,7 @@ func examples(t testing.TB) map[string]*Experiment {
 		require.NoError(t, err, f)
 		out[filepath.Base(filepath.Dir(f))+"/"+filepath.Base(f)] = e
 	}
-	for name, text := range map[string]string{"everything": everything, "shaped": shaped, "bright": everything + readBoth, "axis": everything + readAxis,
+	for name, text := range map[string]string{"everything": everything, "shaped": shaped, "bare": bareDrive, "bright": everything + readBoth, "axis": everything + readAxis,
 		"photons": everything + "\n[readout]\nemission = [\"one\", \"two\"]\nduring = \"one\"\n",
 		"rate":    everything + "\n[readout]\nemission = [\"one\", \"two\", \"three\"]\n"} {
 		e, err := Read(name+".toml", []byte(text))

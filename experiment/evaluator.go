@@ -105,7 +105,8 @@ func (l *layout) newEvaluator() *evaluator {
 	uses(s.sequence.order, v.used)
 	v.solver = lindblad.NewSolver(l.engine, l.memory, lindblad.Settings{Accuracy: s.accuracy})
 	v.settings = models.Settings{
-		Drives: make([]models.DriveSettings, len(s.drives)), Decays: make([]models.DecaySettings, len(s.decays)),
+		Energies: make([]dual.Number, len(s.levels)),
+		Drives:   make([]models.DriveSettings, len(s.drives)), Decays: make([]models.DecaySettings, len(s.decays)),
 		Dephasings: make([]models.WeightSettings, len(s.dephasings)), Shifts: make([]models.WeightSettings, len(s.shifts)),
 	}
 	for i, d := range s.drives {
@@ -145,6 +146,9 @@ func optional(x []dual.Number, f field, standard float64) dual.Number {
 // base fills the settings that hold outside of any step.
 func (v *evaluator) base(x []dual.Number) {
 	s := v.e.shape
+	for a, f := range s.energies {
+		v.settings.Energies[a] = optional(x, f, 0)
+	}
 	for i, d := range s.drives {
 		set := &v.settings.Drives[i]
 		set.On = false

@@ -26,6 +26,7 @@ type shape struct {
 	accuracy float64
 
 	levels     []string
+	energies   []field // none: zero
 	drives     []*drive
 	decays     []*decay
 	dephasings []*weighted

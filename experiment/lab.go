@@ -17,6 +17,7 @@ type drive struct {
 	detuning  field
 	phase     field
 	linewidth field
+	lab       bool // acts as it is, without rotating-wave approximation
 }
 
 // decay is a [decay.NAME] block. Rates in 1/s come from rateOf.
@@ -79,6 +80,9 @@ func (r *reader) blocks(group, doc string, read func(k *keys, name string, n *no
 func (r *reader) readLevels() {
 	r.blocks("level", "one for each level", func(k *keys, name string, n *node) {
 		r.e.shape.levels = append(r.e.shape.levels, name)
+		var energy field
+		k.number("energy", &energy, frequency, "energy over h, for drives with frame = \"lab\"")
+		r.e.shape.energies = append(r.e.shape.energies, energy)
 		k.done()
 	})
 	if len(r.e.shape.levels) < 2 && !r.listing {
@@ -112,6 +116,11 @@ func (r *reader) readDrives() {
 		k.number("detuning", &d.detuning, frequency.or(0), "detuning of the drive from its transition")
 		k.number("phase", &d.phase, angle.or(0), "phase φ of the field cos(2πνt + φ)")
 		k.number("linewidth", &d.linewidth, frequency.from(0).offAt(0), "Lorentzian full width of the source (white frequency noise)")
+		var frame string
+		if n := k.text("frame", &frame, "\"lab\": the field acts as it is, without rotating-wave approximation; needs the levels' energies"); n != nil && frame != "lab" {
+			k.fail(n, "frame", "there is no frame %q; write frame = \"lab\" or leave it out for the frame of the drives", frame)
+		}
+		d.lab = frame == "lab"
 		k.done()
 		r.e.shape.drives = append(r.e.shape.drives, d)
 	})

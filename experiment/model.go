@@ -11,7 +11,7 @@ import (
 func (s *shape) model() models.Model {
 	m := models.Model{Levels: len(s.levels)}
 	for _, d := range s.drives {
-		m.Drives = append(m.Drives, models.Drive{Pairs: d.pairs})
+		m.Drives = append(m.Drives, models.Drive{Pairs: d.pairs, Lab: d.lab})
 	}
 	for _, d := range s.decays {
 		m.Decays = append(m.Decays, models.Decay{Pairs: d.pairs, Joint: d.joint, Reversible: !d.joint && len(d.pairs) == 1})
@@ -47,6 +47,9 @@ func (r *reader) checkModel() {
 				return
 			}
 		}
+	}
+	if r.checkLab(); r.err() != nil {
+		return
 	}
 	layout, err := models.NewLayout(s.model())
 	if err != nil {
@@ -127,4 +130,38 @@ func (e *Experiment) Frames() []string {
 		}
 	}
 	return out
+}
+
+// checkLab holds what drives need that act as they are.
+func (r *reader) checkLab() {
+	s := r.e.shape
+	lab := false
+	for _, d := range s.drives {
+		if d.lab != s.drives[0].lab {
+			r.fail(s.root.at(joinKey("drive", d.name)), joinKey("drive", d.name)+".frame", "differs from that of drive %q; write frame = \"lab\" for all drives or for none", s.drives[0].name)
+			return
+		}
+		lab = lab || d.lab
+		if d.lab && d.linewidth != none {
+			r.fail(s.nodes[d.linewidth], s.dials[d.linewidth].Path, "needs the frame of the drive, which frame = \"lab\" gives up; use a dephasing")
+		}
+	}
+	for a, f := range s.energies {
+		switch {
+		case lab && f == none:
+			r.fail(s.root.at(joinKey("level", s.levels[a])), joinKey("level", s.levels[a]), "has no energy; drives with frame = \"lab\" need the energy of every level, as in energy = \"0 Hz\"")
+		case !lab && f != none:
+			r.fail(s.nodes[f], s.dials[f].Path, "has no effect: in the frame of the drives only detunings count; write frame = \"lab\" in the drives or leave the energy out")
+		}
+	}
+	for _, st := range s.steps {
+		for _, d := range st.on {
+			if f := st.chirpOf(d); lab && f != none {
+				r.fail(s.nodes[f], s.dials[f].Path, "needs the frame of the drive, which frame = \"lab\" gives up")
+			}
+		}
+		if lab && st.ideal {
+			r.fail(s.nodes[st.area], s.dials[st.area].Path, "a rotation in no time needs the frame of the drive, which frame = \"lab\" gives up; let it last")
+		}
+	}
 }

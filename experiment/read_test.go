@@ -75,6 +75,13 @@ func TestMistakes(t *testing.T) {
 		{"circle of dials", `[scan.wait]`, "[dial.a]\nturns = { \"dial.b.value\" = 1 }\nvalue = 1\n[dial.b]\nturns = { \"dial.a.value\" = 1 }\nvalue = 1\n[scan.wait]", 0, []string{"circle"}},
 		{"zero rabi with an area", `rabi = "10 kHz"`, `rabi = "0 Hz"`, 13, []string{"step.half.area", "zero"}},
 		{"joint decay of unequal frames", `[scan.wait]`, "[level.x]\n[decay.j]\npairs = { \"e:g\" = 1, \"x:g\" = 1 }\nrate = \"1 /s\"\n[scan.wait]", 20, []string{"decay.j.pairs", "different frequencies"}},
+		{"energy without lab", `[level.e]`, "[level.e]\nenergy = \"1 MHz\"", 4, []string{"level.e.energy", "no effect", "lab"}},
+		{"lab without energy", `rabi = "10 kHz"`, "rabi = \"10 kHz\"\nframe = \"lab\"", 2, []string{"level.g", "no energy"}},
+		{"no such shape", `area = "0.5 pi"`, "area = \"0.5 pi\"\nlasts = \"1 us\"\nshape = \"gausian\"", 15, []string{"step.half.shape", "gaussian"}},
+		{"shape without duration", `area = "0.5 pi"`, "area = \"0.5 pi\"\nshape = \"blackman\"", 11, []string{"step.half.lasts", "duration"}},
+		{"shape without width", `area = "0.5 pi"`, "area = \"0.5 pi\"\nlasts = \"1 us\"\nshape = \"sech\"", 11, []string{"step.half.width", "missing"}},
+		{"width of a square", `area = "0.5 pi"`, "area = \"0.5 pi\"\nlasts = \"1 us\"\nwidth = \"1 us\"", 15, []string{"step.half.width", "gaussian"}},
+		{"waveform that is not there", `area = "0.5 pi"`, "area = \"0.5 pi\"\nlasts = \"1 us\"\nshape = \"table\"\nfile = \"nowhere.csv\"", 16, []string{"step.half.file", "nowhere.csv"}},
 		{"linewidth in a loop", `[scan.wait]`, "[drive.two]\nbetween = [\"g\", \"e\"]\nrabi = \"1 Hz\"\nlinewidth = \"1 Hz\"\n[scan.wait]", 21, []string{"drive.two.linewidth", "loop"}},
 	}
 	_, err := Read("plain.toml", []byte(plain))

@@ -41,12 +41,15 @@ func FindFrames(m Model) (Frames, error) {
 		}
 	}
 	for n, d := range m.Drives {
+		if d.Lab != m.Drives[0].Lab {
+			return f, fmt.Errorf("drives 1 and %d differ in whether they act as they are; either all drives do or none", n+1)
+		}
 		for j, p := range d.Pairs {
 			shift, closes := f.difference(p), false
 			for k, s := range shift {
 				closes = closes || (k == n) != (s == 1) || (k != n && s != 0)
 			}
-			if closes && !used[[2]int{n, j}] {
+			if closes && !d.Lab && !used[[2]int{n, j}] {
 				f.loopOf[[2]int{n, j}] = len(f.Loops)
 				f.Loops = append(f.Loops, Loop{Drive: n, Pair: j, Shift: shift})
 			}
@@ -60,6 +63,9 @@ func (f *Frames) walk(m Model, first int, used map[[2]int]bool) {
 	for queue := []int{first}; len(queue) > 0; queue = queue[1:] {
 		a := queue[0]
 		for n, d := range m.Drives {
+			if d.Lab {
+				continue // nothing turns with it
+			}
 			for j, p := range d.Pairs {
 				b, gain := p.To, 1
 				if p.To == a {

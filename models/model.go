@@ -22,7 +22,14 @@ type Pair struct{ From, To int }
 
 // Drive is a light field on one or several pairs (From is the lower level).
 // All pairs share its frame, phase and linewidth.
-type Drive struct{ Pairs []Pair }
+//
+// With Lab the field acts as it is, without rotating-wave approximation:
+// H/ħ gains Ω cos(2πνt + φ)(|e⟩⟨g| + h.c.), ν = E_e − E_g + detuning of the
+// first pair, and the levels keep their energies. Then all drives must be so.
+type Drive struct {
+	Pairs []Pair
+	Lab   bool
+}
 
 // Decay is a channel from an upper level to one or several lower ones.
 //
@@ -81,6 +88,18 @@ func NewLayout(m Model) (*Layout, error) {
 	return l, nil
 }
 
+// lab reports whether the drives act as they are.
+func (l *Layout) lab() bool { return len(l.Model.Drives) > 0 && l.Model.Drives[0].Lab }
+
+// rotors is the number of running phases: one for each loop, or for each drive
+// that acts as it is.
+func (l *Layout) rotors() int {
+	if l.lab() {
+		return len(l.Model.Drives)
+	}
+	return len(l.Frames.Loops)
+}
+
 func (l *Layout) add(p lindblad.Piece) int {
 	l.Pieces = append(l.Pieces, p)
 	return len(l.Pieces) - 1
@@ -92,6 +111,7 @@ func (l *Layout) layEnergies() {
 		for _, m := range l.Frames.Counts[a] {
 			moved[a] = moved[a] || m != 0
 		}
+		moved[a] = moved[a] || l.lab()
 	}
 	for _, s := range l.Model.Shifts {
 		for _, a := range s.Levels {

@@ -11,7 +11,8 @@ import (
 // Settings are the numbers of one stretch of time: SI units, ordinary
 // frequencies. The slices are parallel to those of the Model.
 type Settings struct {
-	Lasts      dual.Number // s
+	Lasts      dual.Number   // s
+	Energies   []dual.Number // of the levels over h, Hz; used when drives act as they are
 	Drives     []DriveSettings
 	Decays     []DecaySettings
 	Dephasings []WeightSettings
@@ -93,7 +94,7 @@ func (l *Layout) Fill(dst *lindblad.Stretch, s *Settings, direction int) {
 	for n := range l.Model.Drives {
 		d := &s.Drives[n]
 		for j := range d.Elements {
-			if d.On && l.loop(n, j) < 0 && d.Pulse.constant() {
+			if d.On && !l.lab() && l.loop(n, j) < 0 && d.Pulse.constant() {
 				l.couple(n, j, coupled(d, j, d.Rabi), d.Phase, part, coef)
 			}
 		}
@@ -103,7 +104,10 @@ func (l *Layout) Fill(dst *lindblad.Stretch, s *Settings, direction int) {
 	for n := range l.Model.Drives {
 		d := &s.Drives[n]
 		for j := range d.Elements {
-			if rotor := l.loop(n, j); d.On && (rotor >= 0 || !d.Pulse.constant()) {
+			switch rotor := l.loop(n, j); {
+			case d.On && l.lab():
+				t.bare(n, j, d)
+			case d.On && (rotor >= 0 || !d.Pulse.constant()):
 				t.couple(n, j, rotor, coupled(d, j, d.Rabi), d)
 			}
 		}
@@ -164,6 +168,9 @@ func (l *Layout) fillEnergies(s *Settings, part func(dual.Number) float64, coef 
 	for a, piece := range l.energy {
 		if piece < 0 {
 			continue
+		}
+		if l.lab() {
+			coef[piece] += 2 * math.Pi * part(s.Energies[a])
 		}
 		for n, m := range l.Frames.Counts[a] {
 			if m != 0 {
@@ -269,6 +276,17 @@ func (l *Layout) fillDampings(s *Settings, part func(dual.Number) float64, coef 
 // fillRotors writes how fast the phases turn that the frames leave over:
 // dθ/dt = 2πδ.
 func (l *Layout) fillRotors(dst *lindblad.Stretch, s *Settings, direction int) {
+	if l.lab() {
+		for n, d := range l.Model.Drives {
+			nu := dual.Add(s.Drives[n].Detuning, dual.Sub(s.Energies[d.Pairs[0].To], s.Energies[d.Pairs[0].From]))
+			if direction >= 0 {
+				dst.Slopes[direction].Rotors[n] = 2 * math.Pi * nu.Emag
+			} else {
+				dst.Rotors[n] = 2 * math.Pi * nu.Real
+			}
+		}
+		return
+	}
 	for i, loop := range l.Frames.Loops {
 		delta := s.Drives[loop.Drive].Detuning
 		for k, m := range loop.Shift {
@@ -289,13 +307,13 @@ func (l *Layout) fillRotors(dst *lindblad.Stretch, s *Settings, direction int) {
 func (l *Layout) NewStretch(directions int) lindblad.Stretch {
 	st := lindblad.Stretch{
 		Coef:   make([]float64, len(l.Pieces)),
-		Rotors: make([]float64, len(l.Frames.Loops)),
+		Rotors: make([]float64, l.rotors()),
 		Slopes: make([]lindblad.Slope, directions),
 	}
 	for j := range st.Slopes {
 		st.Slopes[j] = lindblad.Slope{
 			Coef:   make([]float64, len(l.Pieces)),
-			Rotors: make([]float64, len(l.Frames.Loops)),
+			Rotors: make([]float64, l.rotors()),
 		}
 	}
 	return st

@@ -52,6 +52,17 @@ func (t terms) couple(drive, pair, rotor int, half dual.Number, d *DriveSettings
 	}
 }
 
+// bare writes Ω cos(θ + φ) on a pair of a drive that acts as it is; its phase
+// θ = 2π∫ν dt runs from the start of the sequence.
+func (t terms) bare(drive, pair int, d *DriveSettings) {
+	c := t.l.coupling[t.l.Model.Drives[drive].Pairs[pair]]
+	omega := dual.Scale(2, coupled(d, pair, d.Rabi))
+	t.add(c.x, omega, d.Phase, d.Pulse, drive)
+	if d.Quadrature != nil {
+		t.add(c.x, omega, dual.Add(d.Phase, dual.Number{Real: math.Pi / 2}), d.Quadrature, drive)
+	}
+}
+
 // energies writes shaped shifts and chirps.
 func (t terms) energies(s *Settings) {
 	for i, shift := range t.l.Model.Shifts {
