@@ -136,3 +136,49 @@ values = ["10 us", "40 us", "100 us"]
 		assert.InDelta(t, want, out.Column("population.g").Values[i], 1e-8)
 	}
 }
+
+// The steady state of a driven two-level atom, with decay and dephasing:
+// ρ_ee = ½ s/(1+s), s = (Ω²γ⊥/Γ)/(γ⊥²+Δ²). For Γ = 1, γφ = 0.3, Ω = 1.7, Δ = 0.9 the
+// project's table of published values has 0.307283359914939 (item 4.5).
+func TestSteadyState(t *testing.T) {
+	text := `format = 1
+[level.g]
+[level.e]
+[drive.d]
+between = ["g", "e"]
+rabi = "0.27056340325622214 MHz"
+detuning = "0.14323944878270583 MHz"
+[decay.x]
+from = "e"
+to = "g"
+rate = "1 /us"
+[dephasing.y]
+weights = { e = 1 }
+rate = "0.3 /us"
+[step.p]
+on = ["d"]
+[sequence]
+order = "p"
+[record]
+when = "steady"
+`
+	e, err := Read("x.toml", []byte(text))
+	require.NoError(t, err)
+	out, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	assert.InDelta(t, 0.307283359914939, out.Column("population.e").Values[0], 1e-12)
+	// A pulse repeated without end, against a thousand of them.
+	again := strings.Replace(text, "on = [\"d\"]\n", "on = [\"d\"]\nlasts = \"0.7 us\"\n[step.gap]\nlasts = \"0.4 us\"\n", 1)
+	again = strings.Replace(again, "order = \"p\"", "order = \"p gap\"", 1)
+	e, err = Read("x.toml", []byte(again))
+	require.NoError(t, err)
+	endless, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	e, err = Read("x.toml", []byte(strings.Replace(strings.Replace(again, "\"p gap\"", "\"1000*(p gap)\"", 1), "when = \"steady\"", "", 1)))
+	require.NoError(t, err)
+	long, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	assert.InDelta(t, long.Column("population.e").Values[0], endless.Column("population.e").Values[0], 1e-8)
+	_, err = Read("x.toml", []byte(strings.Replace(text, "when = \"steady\"", "", 1)))
+	require.ErrorContains(t, err, "step.p")
+}

@@ -97,6 +97,7 @@ type evaluator struct {
 	rho        []complex128
 	drho       []complex128
 	used       []bool
+	notUnique  bool // some steady state was not the only one
 }
 
 func (l *layout) newEvaluator() *evaluator {
@@ -232,7 +233,7 @@ func (v *evaluator) fill(i, direction int, x []dual.Number) {
 	}
 	switch {
 	case st.area == none:
-		v.settings.Lasts = x[st.lasts]
+		v.settings.Lasts = optional(x, st.lasts, 1) // without end: any time will do
 	case st.lasts == none:
 		v.settings.Lasts = dual.Number{Real: x[st.area].Real / st.turnRate, Emag: x[st.area].Emag / st.turnRate}
 	default:
@@ -369,11 +370,28 @@ func (v *evaluator) shot(ctx context.Context, values, z []float64, weight float6
 		v.recorded(j, values, weight, into)
 	}
 	v.order = tree(v.order, s.sequence.order, values)
+	if s.record.steady && record.Times == nil {
+		return v.steady(ctx, values, z, weight, into)
+	}
 	return v.solver.Run(ctx, v.x0, v.dx0[:len(v.directions)], v.stretches, v.order, record,
 		func(k int, x []float64, dx [][]float64) error {
 			v.collect(k, x, dx, values, z, weight, into)
 			return nil
 		})
+}
+
+// steady adds the state to which the order leads when it is repeated without
+// end.
+func (v *evaluator) steady(ctx context.Context, values, z []float64, weight float64, into *states) error {
+	x, dx, unique, err := v.solver.Steady(ctx, v.x0, v.stretches, v.order)
+	if err != nil {
+		return fmt.Errorf("%s: record.when: %w", v.e.shape.file, err)
+	}
+	if !unique {
+		v.notUnique = true
+	}
+	v.collect(0, x, dx, values, z, weight, into)
+	return nil
 }
 
 // recorded adds the length of the recorded time.

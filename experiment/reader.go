@@ -31,6 +31,7 @@ func (r *reader) readFile(root *node) {
 	if r.listing || r.err() != nil {
 		return
 	}
+	r.checkEndless()
 	r.turnUserDials()
 	r.orderSources()
 	if r.err() == nil {

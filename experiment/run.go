@@ -99,6 +99,9 @@ func each(ctx context.Context, l *layout, n int, set Settings, do func(v *evalua
 		for _, w := range v.solver.Warnings() {
 			allWarnings[w] = true
 		}
+		if v.notUnique {
+			allWarnings["the steady state is not unique at some point; the one reached from the start is given"] = true
+		}
 		mu.Unlock()
 	}
 	for range workers {

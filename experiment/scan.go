@@ -186,6 +186,7 @@ func spacedValue(a, b float64, i, n int, log bool) float64 {
 
 // record is the [record] block: what goes into the table beside the scan.
 type record struct {
+	steady     bool // the state to which the order, repeated without end, leads
 	samples    int
 	during     int // index of a step, −1: the whole order
 	coherences [][2]int
@@ -200,9 +201,17 @@ func (r *reader) readRecord() {
 	list := k.find("coherences", "\"all\", \"none\" or list of pairs", "coherences in the table, pairs a:b, a before b in the file")
 	var during string
 	duringNode := k.text("during", &during, "samples belong to the first run of this step")
+	var when string
+	whenNode := k.text("when", &when, "\"steady\": the state to which the order, repeated without end, leads")
 	k.done()
 	if r.listing {
 		return
+	}
+	if rec.steady = when == "steady"; whenNode != nil && !rec.steady {
+		k.fail(whenNode, "when", "%q is not known; write when = \"steady\" or leave it out for the end of the order", when)
+	}
+	if rec.steady {
+		r.checkSteady(k, rec)
 	}
 	if rec.samples == 1 {
 		k.fail(top.child("samples"), "samples", "is 1; write 0 for the end only, or 2 and more for times from 0 to the end")
@@ -267,4 +276,29 @@ func (r *reader) readCoherences(k *keys, list *node) {
 // coherenceName is the start of a pair's column names.
 func (e *Experiment) coherenceName(p [2]int) string {
 	return fmt.Sprintf("coherence.%s:%s", e.shape.levels[p[0]], e.shape.levels[p[1]])
+}
+
+// checkSteady holds what does not go with a steady state.
+func (r *reader) checkSteady(k *keys, rec *record) {
+	for _, key := range []string{"samples", "during"} {
+		if n := k.n.child(key); n != nil {
+			k.fail(n, key, "does not go with when = \"steady\", which has no time")
+		}
+	}
+	if o := r.e.shape.readout; o != nil && o.during >= 0 {
+		k.fail(r.top("readout").child("during"), "during", "does not go with a steady state: photons counted without end have no number; leave it out for their rate")
+	}
+}
+
+// checkEndless refuses steps without a duration, but for the only step of an
+// order that goes on to its steady state.
+func (r *reader) checkEndless() {
+	s := r.e.shape
+	alone := s.record.steady && len(s.sequence.order) == 1 && s.sequence.order[0].group == nil && s.sequence.order[0].number == none && s.sequence.order[0].count == 1
+	for i, st := range s.steps {
+		if st.lasts == none && st.area == none && !(alone && s.sequence.order[0].step == i) {
+			path := joinKey("step", st.name)
+			r.fail(s.root.at(path), path, "give lasts = \"20 us\" or area = \"0.5 pi\"")
+		}
+	}
 }

@@ -167,8 +167,6 @@ func (r *reader) duration(k *keys, s *step) {
 		return
 	}
 	switch {
-	case s.area == none && s.lasts == none && lasts == nil && area == nil:
-		k.fail(nil, "", "give lasts = \"20 us\" or area = \"0.5 pi\"")
 	case area != nil && len(s.on) == 0:
 		k.fail(area, "area", "needs a drive; name it in on")
 	}
