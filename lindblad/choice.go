@@ -8,6 +8,7 @@ type method uint8
 const (
 	byPropagator method = iota // a dense exponential, applied to states
 	bySeries                   // in time, see shaped; constant stretches too
+	byRungeKutta               // in time, where an envelope has no series
 )
 
 // denseLimit is the largest state with dense propagators.
@@ -36,6 +37,8 @@ func (s *Solver) choose(order []Node) {
 		}
 		s.methods[i] = byPropagator
 		switch {
+		case !st.Ideal && (s.rungeKutta || !st.series()):
+			s.methods[i] = byRungeKutta
 		case len(st.Terms) > 0 || s.l.n > denseLimit:
 			s.methods[i] = bySeries
 		case s.l.n > 32 && duration > 0:

@@ -24,9 +24,13 @@ type Term struct {
 	Rotor            int      // −1: none; the factor is then cos(Phase)
 }
 
-// Envelope is a function of time with its Taylor series.
-type Envelope interface {
-	At(t float64) float64
+// Envelope is a function of time since the start of its stretch.
+type Envelope interface{ At(t float64) float64 }
+
+// Series is an Envelope with its Taylor series, which the fast methods need;
+// without it a stretch is carried by Runge–Kutta steps.
+type Series interface {
+	Envelope
 	Taylor(t float64, c []float64) // c[k] = f⁽ᵏ⁾(t)/k!
 }
 

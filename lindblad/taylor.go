@@ -91,7 +91,7 @@ func (w *taylor) coefficients(f *field, t float64, order int) {
 			clear(e)
 			e[0] = 1
 		} else {
-			term.Envelope.Taylor(t, e)
+			term.Envelope.(Series).Taylor(t, e)
 		}
 		w.rotation(f, term, t, co, si)
 		multiplyAdd(d.f, e, co, term.Amplitude)
@@ -110,7 +110,7 @@ func (w *taylor) coefficients(f *field, t float64, order int) {
 			}
 			if ts.Envelope != nil {
 				de := w.series[3][:order+1]
-				ts.Envelope.Taylor(t, de)
+				ts.Envelope.(Series).Taylor(t, de)
 				multiplyAdd(df, de, co, term.Amplitude)
 			}
 			phase, rate := ts.Phase, 0.0
