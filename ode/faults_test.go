@@ -215,3 +215,19 @@ func TestWrongLengthPanics(t *testing.T) {
 	})
 	assert.Panics(t, func() { NewSolver(-1, DormandPrince54, Settings{}) })
 }
+
+// No numbers at all: every output is handed on, and nothing goes wrong.
+func TestNothingToSolve(t *testing.T) {
+	for _, tab := range Tableaux {
+		var seen []float64
+		stats, err := NewSolver(0, tab, Settings{PerTime: true}).Solve(background, func(float64, []float64, []float64) error { return nil },
+			0, nil, []float64{0, 1, 2}, func(_ int, at float64, y []float64) error {
+				assert.Empty(t, y)
+				seen = append(seen, at)
+				return nil
+			})
+		require.NoError(t, err)
+		assert.Equal(t, []float64{0, 1, 2}, seen)
+		assert.Zero(t, stats.Rejected)
+	}
+}
