@@ -278,6 +278,7 @@ type Trace struct {
 	Error  []float64 // standard errors as given; nil when the file has none
 	Shots  []float64 // shots of each row; nil when not known
 	Is     string    // "fraction", "counts" or "value"
+	Bright bool      // counts are of shots called bright, not of photons
 	Shows  string    // column of the prediction
 	At     []Turn
 	Scale  string // paths of the dials of scale and offset; empty for a trace without block
@@ -356,6 +357,7 @@ func (e *Experiment) readTrace(t *trace, name, path string) (*Trace, error) {
 	if out.Shows == "" {
 		out.Shows = "signal"
 	}
+	out.Bright = e.shape.readout == nil || e.shape.readout.what == readBright
 	if t.scale != none {
 		out.Scale, out.Offset = e.shape.dials[t.scale].Path, e.shape.dials[t.offset].Path
 	}

@@ -1,0 +1,121 @@
+package fit
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"rhotrace/io/quantity"
+)
+
+// doubts puts into words what the user must know before believing the numbers.
+func (p *problem) doubts(a *Answer, r *Result, others []*Result) {
+	warn := func(format string, args ...any) { a.Warnings = append(a.Warnings, fmt.Sprintf(format, args...)) }
+	if !r.Status.Converged() {
+		warn("the search did not come to an end: %v", r.Status)
+	}
+	if r.DegreesOfFreedom < 1 {
+		warn("there are no more points than unknowns, so nothing tells how good the fit is and errors are not known")
+	}
+	for _, i := range r.AtBound {
+		u := &a.Unknowns[i]
+		warn("%s stands at its bound %s; widen low and high, or the data say nothing about it", u.Name, u.Format(u.Value))
+	}
+	for i := range a.Unknowns {
+		p.openUnknown(a, i, warn)
+	}
+	names := make([]string, len(p.params))
+	for i, u := range a.Unknowns {
+		names[i] = u.Name
+	}
+	for _, d := range r.Directions {
+		if len(d.Params) > 1 && d.Condition > 1e3 {
+			warn("%s", d.Words(names))
+		}
+	}
+	for _, o := range others {
+		warn("another answer fits as well: %s (sum of squares %.4g against %.4g)", p.describe(a, o.Params), o.ChiSquare, r.ChiSquare)
+	}
+	if r.ErrorsKnown && r.DegreesOfFreedom >= 1 {
+		switch q := ChiSquareProbability(r.ChiSquare, r.DegreesOfFreedom); {
+		case q < 1e-3:
+			warn("the residuals are larger than the errors allow (reduced chi-square %.3g, probability %.1g): the model lacks something or the errors are too small; the errors printed do not make up for it", a.ReducedChiSquare, q)
+		case q > 1-1e-4:
+			warn("the residuals are smaller than the errors (reduced chi-square %.3g): the errors given are too large", a.ReducedChiSquare)
+		}
+	}
+	for k := range a.Traces {
+		noise(&a.Traces[k], len(a.Traces) > 1, p.traces[k].unit, warn)
+	}
+}
+
+// openUnknown tells what the data leave open.
+func (p *problem) openUnknown(a *Answer, i int, warn func(string, ...any)) {
+	u := &a.Unknowns[i]
+	switch {
+	case math.IsInf(u.Error, 1):
+		warn("%s is not constrained by these data", u.Name)
+	case math.IsNaN(u.Error):
+	case u.dial.Off != nil && math.IsInf(*u.dial.Off, 1) && u.Error > 0.4*u.Value:
+		// What is measured is the rate, the inverse: a one-sided limit, 95 %.
+		rate := 1/u.Value + 1.645*u.Error/(u.Value*u.Value)
+		warn("%s is not constrained upwards by these data: longer than about %s (95 %%)", u.Name, u.Format(roundTo(1/rate, 2)))
+	case u.dial.Off != nil && *u.dial.Off == 0 && u.Error > 0.6*math.Abs(u.Value):
+		warn("%s is not told from zero by these data: less than about %s (95 %%)", u.Name, u.Format(roundTo(u.Value+1.645*u.Error, 2)))
+	case u.dial.Unit != "1" && u.dial.Unit != "rad" && u.dial.Low >= 0 && u.Error > math.Abs(u.Value):
+		warn("%s is hardly constrained by these data: its error is larger than its value", u.Name)
+	}
+}
+
+func (p *problem) describe(a *Answer, params []float64) string {
+	var parts []string
+	for i := range a.Unknowns {
+		if !p.isFactor(i) {
+			parts = append(parts, a.Unknowns[i].Name+" = "+a.Unknowns[i].Format(roundTo(params[i], 4)))
+		}
+	}
+	return strings.Join(parts, ", ")
+}
+
+// noise tests whether residuals look like noise: runs of one sign, and a
+// frequency that is left over.
+func noise(f *Fitted, several bool, unit string, warn func(string, ...any)) {
+	name := "the residuals"
+	if several {
+		name = "the residuals of " + f.Name
+	}
+	normal := make([]float64, len(f.Residual))
+	for i := range normal {
+		normal[i] = f.Residual[i] / f.Error[i]
+		if f.Error[i] == 0 {
+			return // an exact fit
+		}
+	}
+	if runs := RunsTest(normal); runs.TooFew < 1e-3 {
+		warn("%s are not noise: they keep their sign for long (%d runs where %.0f are expected, probability %.1g)", name, runs.Runs, runs.Expected, runs.TooFew)
+	}
+	if len(normal) < 12 {
+		return
+	}
+	if peaks := Peaks(f.X, normal, nil, 1); len(peaks) > 0 && peaks[0].FalseAlarm < 1e-4 {
+		left := fmt.Sprintf("a period of %.3g", 1/peaks[0].Frequency)
+		switch unit {
+		case "s", "":
+			left = "a frequency of " + quantity.Format(roundTo(peaks[0].Frequency, 3), quantity.Frequency)
+		case "Hz":
+			left = "a period of " + quantity.Format(roundTo(1/peaks[0].Frequency, 3), quantity.Frequency)
+		}
+		warn("%s are not noise: %s is left over (chance %.1g)", name, left, peaks[0].FalseAlarm)
+	}
+}
+
+func roundTo(v float64, digits int) float64 {
+	if v == 0 || math.IsInf(v, 0) || math.IsNaN(v) {
+		return v
+	}
+	f := math.Pow(10, float64(digits-1)-math.Floor(math.Log10(math.Abs(v))))
+	if f > 1e15 || f < 1e-15 {
+		return v
+	}
+	return math.Round(v*f) / f
+}

@@ -1,0 +1,270 @@
+package fit_test
+
+import (
+	"context"
+	"fmt"
+	"math"
+	"math/rand/v2"
+	"os"
+	"path/filepath"
+	"strings"
+	"testing"
+
+	"github.com/stretchr/testify/assert"
+	"github.com/stretchr/testify/require"
+
+	"rhotrace/experiment"
+	"rhotrace/fit"
+)
+
+const atom = `format = 1
+[level.g]
+[level.e]
+[drive.d]
+between = ["g", "e"]
+rabi = "10 kHz"
+detuning = "DETUNING"
+[decay.x]
+from = "e"
+to = "g"
+lifetime = "LIFETIME"
+[dephasing.y]
+weights = { e = 1 }
+time = "TIME"
+[step.half]
+on = ["d"]
+area = "0.5 pi"
+[step.wait]
+lasts = "1 ms"
+[sequence]
+order = "half wait half"
+[scan.w]
+dial = "step.wait.lasts"
+from = "0 ms"
+to = "10 ms"
+points = 81
+[readout]
+bright = "g"
+shots = 100
+`
+
+func read(t testing.TB, text string) *experiment.Experiment {
+	t.Helper()
+	e, err := experiment.Read(filepath.Join(t.TempDir(), "x.toml"), []byte(text))
+	require.NoError(t, err)
+	return e
+}
+
+// draw runs an experiment and draws binomial shots from its signal: invented
+// data, seeded.
+func draw(t testing.TB, e *experiment.Experiment, seed uint64, shots int, scale, offset float64) *experiment.Trace {
+	t.Helper()
+	out, err := experiment.Run(context.Background(), e)
+	require.NoError(t, err)
+	r := rand.New(rand.NewPCG(seed, 1))
+	tr := &experiment.Trace{Name: "drawn", File: "drawn.csv", Is: "fraction", Bright: true, Shows: "signal"}
+	dial := out.Columns[0]
+	tr.Dials = []string{dial.Name}
+	for i, p := range out.Column("signal").Values {
+		p = offset + scale*p
+		k := 0
+		for range shots {
+			if r.Float64() < p {
+				k++
+			}
+		}
+		tr.Points = append(tr.Points, []float64{dial.Values[i]})
+		tr.Y = append(tr.Y, float64(k)/float64(shots))
+		tr.Shots = append(tr.Shots, float64(shots))
+	}
+	return tr
+}
+
+func fill(text string, pairs ...string) string { return strings.NewReplacer(pairs...).Replace(text) }
+
+// From starts far away, a fit finds the values that the data were drawn with.
+func TestFitsFindTheTruth(t *testing.T) {
+	ramsey := fill(atom, "LIFETIME", "1 s", "TIME", "TTT", "DETUNING", "DDD")
+	flop := fill(atom, "DETUNING", "0 Hz", "LIFETIME", "1 s", "TIME", "TTT", "order = \"half wait half\"", "order = \"pulse\"",
+		"[step.wait]", "[step.pulse]\non = [\"d\"]\nlasts = \"1 us\"\n[step.wait]", "step.wait.lasts", "step.pulse.lasts", "to = \"10 ms\"", "to = \"1 ms\"", "rabi = \"10 kHz\"", "rabi = \"RRR\"")
+	relax := fill(atom, "DETUNING", "0 Hz", "LIFETIME", "LLL", "TIME", "1 s", "half wait half", "wait", "bright = \"g\"", "bright = \"e\"", "[readout]", "[start]\npopulations = { e = 1 }\n[readout]")
+	line := fill(atom, "DETUNING", "0 Hz", "LIFETIME", "1 s", "TIME", "1 s", "step.wait.lasts", "dial.probe.value", "from = \"0 ms\"", "from = \"-8 kHz\"", "to = \"10 ms\"", "to = \"8 kHz\"",
+		"half wait half", "pulse", "[step.wait]", "[step.pulse]\non = [\"d\"]\nlasts = \"400 us\"\n[step.wait]", "rabi = \"10 kHz\"", "rabi = \"1.25 kHz\"",
+		"[scan.w]", "[dial.probe]\nturns = { \"drive.d.detuning\" = 1 }\nvalue = \"0 Hz\"\n[dial.centre]\nturns = { \"drive.d.detuning\" = -1 }\nvalue = \"CCC\"\n[scan.w]")
+	for _, c := range []struct {
+		name, text    string
+		truth, guess  []string
+		scale, offset float64
+		unknowns      string
+		want          map[string]float64
+	}{
+		{"fringe", ramsey, []string{"DDD", "417 Hz", "TTT", "6 ms"}, []string{"DDD", "20 Hz", "TTT", "60 ms"}, 1, 0,
+			"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"0 Hz\"\n[unknown.time]\ndial = \"dephasing.y.time\"\n", map[string]float64{"detuning": 417, "time": 6e-3}},
+		{"fast fringe", ramsey, []string{"DDD", "2713 Hz", "TTT", "4 ms"}, []string{"DDD", "200 Hz", "TTT", "1 ms"}, 1, 0,
+			"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"0 Hz\"\nhigh = \"4 kHz\"\n[unknown.time]\ndial = \"dephasing.y.time\"\n", map[string]float64{"detuning": 2713, "time": 4e-3}},
+		{"flop", flop, []string{"RRR", "13.7 kHz", "TTT", "0.6 ms"}, []string{"RRR", "2 kHz", "TTT", "5 ms"}, 1, 0,
+			"[unknown.rabi]\ndial = \"drive.d.rabi\"\n[unknown.time]\ndial = \"dephasing.y.time\"\n", map[string]float64{"rabi": 13.7e3, "time": 0.6e-3}},
+		{"relaxation", relax, []string{"LLL", "2.2 ms"}, []string{"LLL", "300 ms"}, 1, 0,
+			"[unknown.lifetime]\ndial = \"decay.x.lifetime\"\n", map[string]float64{"lifetime": 2.2e-3}},
+		{"line", line, []string{"CCC", "2.9 kHz"}, []string{"CCC", "-5 kHz"}, 1, 0,
+			"[unknown.centre]\ndial = \"dial.centre.value\"\n", map[string]float64{"centre": 2.9e3}},
+		{"squeezed fringe", ramsey, []string{"DDD", "731 Hz", "TTT", "5 ms"}, []string{"DDD", "100 Hz", "TTT", "20 ms"}, 0.8, 0.07,
+			"[trace.drawn]\nfile = \"no.csv\"\nx = \"w\"\nx-unit = \"s\"\ny = \"y\"\n[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"0 Hz\"\n[unknown.time]\ndial = \"dephasing.y.time\"\n[unknown.scale]\ndial = \"trace.drawn.scale\"\n[unknown.offset]\ndial = \"trace.drawn.offset\"\n",
+			map[string]float64{"detuning": 731, "time": 5e-3, "scale": 0.8, "offset": 0.07}},
+	} {
+		t.Run(c.name, func(t *testing.T) {
+			tr := draw(t, read(t, fill(c.text, c.truth...)), 7, 100, c.scale, c.offset)
+			if strings.Contains(c.unknowns, "trace.drawn") {
+				tr.Scale, tr.Offset = "trace.drawn.scale", "trace.drawn.offset"
+			}
+			a, err := fit.Traces(context.Background(), read(t, fill(c.text, c.guess...)+c.unknowns), []*experiment.Trace{tr}, fit.TraceSettings{})
+			require.NoError(t, err)
+			for _, u := range a.Unknowns {
+				assert.InDelta(t, c.want[u.Name], u.Value, 4*u.Error, "%s: %g ± %g", u.Name, u.Value, u.Error)
+				if u.Name != "offset" {
+					assert.Less(t, u.Error, 0.4*math.Abs(u.Value))
+				}
+			}
+			assert.True(t, a.ErrorsKnown)
+			assert.InDelta(t, 1, a.ReducedChiSquare, 0.6) // 79 points: 4 standard deviations of χ²/ν are 0.64
+			assert.Empty(t, a.Warnings)
+		})
+	}
+}
+
+// The errors printed are those that repeated experiments scatter by: over 60
+// draws (value − truth)/error has mean 0 and standard deviation 1 within four
+// times their counting errors 1/√60 and 1/√120.
+func TestErrorsAreTheScatter(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "6 ms", "DETUNING", "417 Hz")
+	e := read(t, text+"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"300 Hz\"\nhigh = \"600 Hz\"\n[unknown.time]\ndial = \"dephasing.y.time\"\nlow = \"1 ms\"\nhigh = \"30 ms\"\n")
+	const draws = 60
+	sum, square := map[string]float64{}, map[string]float64{}
+	for seed := range draws {
+		a, err := fit.Traces(context.Background(), e, []*experiment.Trace{draw(t, e, uint64(seed), 100, 1, 0)}, fit.TraceSettings{})
+		require.NoError(t, err)
+		for _, u := range a.Unknowns {
+			truth, _ := e.Value(u.Dial)
+			z := (u.Value - truth) / u.Error
+			sum[u.Name] += z
+			square[u.Name] += z * z
+		}
+	}
+	for name := range sum {
+		mean := sum[name] / draws
+		assert.InDelta(t, 0, mean, 4/math.Sqrt(draws), name)
+		assert.InDelta(t, 1, math.Sqrt(square[name]/draws-mean*mean), 4/math.Sqrt(2*draws), name)
+	}
+}
+
+// Two traces of one atom share an unknown and keep their own scales.
+func TestJointFit(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "6 ms", "DETUNING", "417 Hz")
+	e := read(t, text)
+	moved, err := e.With(experiment.Turn{Path: "drive.d.phase", Value: 0})
+	require.NoError(t, err)
+	one, two := draw(t, e, 3, 100, 0.9, 0.02), draw(t, moved, 4, 200, 0.7, 0.1)
+	one.Scale, one.Offset, one.Name = "trace.a.scale", "trace.a.offset", "a"
+	two.Scale, two.Offset, two.Name = "trace.b.scale", "trace.b.offset", "b"
+	block := "[trace.NAME]\nfile = \"no.csv\"\nx = \"w\"\nx-unit = \"s\"\ny = \"y\"\n"
+	asked := read(t, fill(text, "417 Hz", "100 Hz")+fill(block, "NAME", "a")+fill(block, "NAME", "b")+
+		"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"0 Hz\"\n[unknown.time]\ndial = \"dephasing.y.time\"\nper = \"trace\"\n"+
+		"[unknown.a]\ndial = \"trace.a.scale\"\n[unknown.b]\ndial = \"trace.b.scale\"\n[unknown.c]\ndial = \"trace.a.offset\"\n[unknown.d]\ndial = \"trace.b.offset\"\n")
+	a, err := fit.Traces(context.Background(), asked, []*experiment.Trace{one, two}, fit.TraceSettings{})
+	require.NoError(t, err)
+	want := map[string]float64{"detuning": 417, "time[a]": 6e-3, "time[b]": 6e-3, "a": 0.9, "b": 0.7, "c": 0.02, "d": 0.1}
+	require.Len(t, a.Unknowns, len(want))
+	for _, u := range a.Unknowns {
+		assert.InDelta(t, want[u.Name], u.Value, 4*u.Error, u.Name)
+	}
+	assert.Equal(t, 162, a.Table().Rows())
+	assert.NotNil(t, a.Table().Column("trace"))
+}
+
+// What data cannot tell is said, not printed with digits.
+func TestDoubtsAreSpoken(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "5 s", "DETUNING", "417 Hz")
+	e := read(t, text)
+	good := draw(t, e, 5, 100, 1, 0)
+	guess := "417 Hz"
+	said := func(unknowns string, tr *experiment.Trace) string {
+		a, err := fit.Traces(context.Background(), read(t, strings.Replace(text, "417 Hz", guess, 1)+unknowns), []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		return strings.Join(a.Warnings, "\n")
+	}
+	assert.Contains(t, said("[unknown.time]\ndial = \"dephasing.y.time\"\n", good), "time is not constrained upwards")
+	assert.Contains(t, said("[unknown.t]\ndial = \"dephasing.y.time\"\n[unknown.l]\ndial = \"decay.x.lifetime\"\n", good), "not constrained")
+	assert.Contains(t, said("[unknown.detuning]\ndial = \"drive.d.detuning\"\n", good), "another answer fits as well", "the sign of the detuning")
+	wavy := *good
+	wavy.Y = append([]float64(nil), good.Y...)
+	for i := range wavy.Y {
+		wavy.Y[i] = math.Max(0, math.Min(1, wavy.Y[i]+0.2*math.Cos(2*math.Pi*1300*wavy.Points[i][0])))
+	}
+	said1 := said("[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"300 Hz\"\nhigh = \"500 Hz\"\n", &wavy)
+	assert.Contains(t, said1, "1.3 kHz is left over")
+	assert.Contains(t, said1, "larger than the errors allow")
+	guess = "430 Hz"
+	assert.Contains(t, said("[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"420 Hz\"\nhigh = \"500 Hz\"\n[unknown.x]\ndial = \"dephasing.y.time\"\n", draw(t, read(t, fill(text, "417 Hz", "300 Hz")), 3, 100, 1, 0)), "bound")
+}
+
+// Hostile traces end with a fit or a sentence.
+func TestHostileTraces(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "6 ms", "DETUNING", "417 Hz") + "[unknown.detuning]\ndial = \"drive.d.detuning\"\n[unknown.time]\ndial = \"dephasing.y.time\"\n"
+	make1 := func(n int, f func(i int) (x, y float64)) *experiment.Trace {
+		tr := &experiment.Trace{Name: "h", Is: "value", Shows: "signal", Dials: []string{"step.wait.lasts"}}
+		for i := range n {
+			x, y := f(i)
+			tr.Points, tr.Y = append(tr.Points, []float64{x}), append(tr.Y, y)
+		}
+		return tr
+	}
+	for name, tr := range map[string]*experiment.Trace{
+		"constant":    make1(40, func(i int) (float64, float64) { return float64(i) * 1e-4, 0.3 }),
+		"zeros":       make1(40, func(i int) (float64, float64) { return float64(i) * 1e-4, 0 }),
+		"three":       make1(3, func(i int) (float64, float64) { return float64(i) * 1e-4, float64(i) }),
+		"two":         make1(2, func(i int) (float64, float64) { return float64(i) * 1e-4, float64(i) }),
+		"one":         make1(1, func(i int) (float64, float64) { return float64(i) * 1e-4, float64(i) }),
+		"duplicate x": make1(30, func(i int) (float64, float64) { return 1e-3, float64(i % 3) }),
+		"backwards":   make1(30, func(i int) (float64, float64) { return float64(30-i) * 1e-4, math.Cos(float64(i)) }),
+		"spikes":      make1(30, func(i int) (float64, float64) { return float64(i) * 1e-4, math.Pow(10, float64(i%7)) }),
+	} {
+		t.Run(name, func(t *testing.T) {
+			a, err := fit.Traces(context.Background(), read(t, text), []*experiment.Trace{tr}, fit.TraceSettings{})
+			if err != nil {
+				assert.NotContains(t, err.Error(), "\n")
+				return
+			}
+			assert.NotEmpty(t, a.Warnings)
+		})
+	}
+}
+
+// The trace that ships with the example is drawn from this; see its remarks.
+func TestExampleTrace(t *testing.T) {
+	e, err := experiment.ReadFile("../examples/fit/experiment.toml")
+	require.NoError(t, err)
+	truth, err := e.With(experiment.Turn{Path: "drive.clock.detuning", Value: 417}, experiment.Turn{Path: "dephasing.field.time", Value: 6.5e-3})
+	require.NoError(t, err)
+	tr := draw(t, truth, 2026, 100, 0.94, 0.03)
+	var b strings.Builder
+	b.WriteString("# invented: drawn from a fringe with a detuning of 417 Hz, Tφ = 6.5 ms, scale 0.94, offset 0.03\nwait_ms,bright\n")
+	for i, y := range tr.Y {
+		fmt.Fprintf(&b, "%.4g,%g\n", tr.Points[i][0]*1e3, y)
+	}
+	const file = "../examples/fit/evening.csv"
+	if _, err := os.Stat(file); os.IsNotExist(err) {
+		require.NoError(t, os.WriteFile(file, []byte(b.String()), 0o644))
+	}
+	text, err := os.ReadFile(file)
+	require.NoError(t, err)
+	assert.Equal(t, b.String(), strings.ReplaceAll(string(text), "\r\n", "\n"), "remove the file to draw it anew")
+	traces, err := e.Traces()
+	require.NoError(t, err)
+	a, err := fit.Traces(context.Background(), e, traces, fit.TraceSettings{})
+	require.NoError(t, err)
+	for i, want := range []float64{417, 6.5e-3, 0.94, 0.03} {
+		u := a.Unknowns[i]
+		assert.InDelta(t, want, u.Value, 4*u.Error, u.Name)
+	}
+	assert.Empty(t, a.Warnings)
+}
