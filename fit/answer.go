@@ -4,6 +4,7 @@ import (
 	"context"
 	"fmt"
 	"math"
+	"slices"
 
 	"rhotrace/experiment"
 	"rhotrace/io/table"
@@ -12,6 +13,9 @@ import (
 // TraceSettings say how traces are fitted; the zero value is the default.
 type TraceSettings struct {
 	Workers int // goroutines; default (0): one for each processor
+	// Progress is told now and then how many places of the search have been
+	// looked at; default: nobody is told.
+	Progress func(done, total int)
 }
 
 // Answer is what measured traces say about the unknowns of an experiment.
@@ -50,6 +54,44 @@ type Fitted struct {
 	Error    []float64
 	Model    []float64
 	Residual []float64 // data − model
+
+	e             *experiment.Experiment // with this trace's own values
+	shows         string
+	scale, offset float64
+}
+
+// Curve is the model on n points evenly spaced over what the trace scans; nil
+// where it scans several dials together.
+func (f *Fitted) Curve(ctx context.Context, n int) (x, y []float64, err error) {
+	if len(f.X) < 2 || len(f.Dials) > 1 {
+		return nil, nil, nil
+	}
+	low, high := slices.Min(f.X), slices.Max(f.X)
+	if !(high > low) {
+		return nil, nil, nil
+	}
+	x = even(low, high, n)
+	r := experiment.Request{Dials: f.Dials, Shows: f.shows}
+	if len(f.Dials) == 0 {
+		r.Times = x
+	}
+	for _, v := range x {
+		if len(f.Dials) == 1 {
+			r.Points = append(r.Points, []float64{v})
+		}
+	}
+	p, err := experiment.NewPredictor(f.e, r)
+	if err != nil {
+		return nil, nil, err
+	}
+	y = make([]float64, n)
+	if err := p.Evaluate(ctx, nil, y, nil); err != nil {
+		return nil, nil, err
+	}
+	for i := range y {
+		y[i] = f.offset + f.scale*y[i]
+	}
+	return x, y, nil
 }
 
 // Traces fits the unknowns of the experiment to measured traces, all at once,
@@ -63,6 +105,7 @@ func Traces(ctx context.Context, e *experiment.Experiment, traces []*experiment.
 	if err != nil {
 		return nil, err
 	}
+	p.progress = set.Progress
 	if p.rows < 1 {
 		return nil, fmt.Errorf("%s: the traces hold no points", e.File())
 	}
@@ -232,7 +275,11 @@ func (p *problem) answer(r *Result, others []*Result) (*Answer, error) {
 		}
 		scale, offset := m.scale.at(r.Params), m.offset.at(r.Params)
 		x, _ := m.axis()
-		f := Fitted{Name: m.trace.Name, X: x, Dials: m.trace.Dials, Points: m.trace.Points, Data: m.y}
+		own, err := p.ownValues(m, r)
+		if err != nil {
+			return nil, err
+		}
+		f := Fitted{Name: m.trace.Name, e: own, shows: m.trace.Shows, scale: scale, offset: offset, X: x, Dials: m.trace.Dials, Points: m.trace.Points, Data: m.y}
 		for i, y := range m.y {
 			model := offset + scale*m.pred[i]
 			s := m.sigma[i]
@@ -262,6 +309,15 @@ func (p *problem) fitted(a *Answer, r *Result) (err error) {
 	}
 	a.Fitted, err = p.e.With(turns...)
 	return err
+}
+
+// ownValues is the experiment as a trace saw it.
+func (p *problem) ownValues(m *measured, r *Result) (*experiment.Experiment, error) {
+	turns := append([]experiment.Turn(nil), m.trace.At...)
+	for _, i := range m.free {
+		turns = append(turns, experiment.Turn{Path: p.params[i].dial.Path, Value: r.Params[i]})
+	}
+	return p.e.With(turns...)
 }
 
 // Table has the data, the model and the residuals of all traces, one row per

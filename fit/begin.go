@@ -49,7 +49,11 @@ func (p *problem) starts() ([]place, error) {
 	}
 	// Frequencies are scanned for several settings of what damps or scales
 	// them: with too short a decay there is no fringe to find.
-	for _, base := range p.settings(own, other, axes) {
+	bases := p.settings(own, other, axes)
+	for _, axis := range axes {
+		p.total += len(bases) * rounds * len(axis)
+	}
+	for _, base := range bases {
 		best := base
 		for range rounds {
 			for _, i := range append(append([]int(nil), oscillating...), other...) {
@@ -251,6 +255,9 @@ func geometric(a, b float64, n int) []float64 {
 func (p *problem) settleFactors(params []float64) (place, error) {
 	out := append([]float64(nil), params...)
 	left := 0.0
+	if p.done++; p.progress != nil && p.total > 0 {
+		p.progress(min(p.done, p.total), p.total)
+	}
 	for _, m := range p.traces {
 		if err := m.predict(p.ctx, out, false); err != nil {
 			if p.ctx.Err() != nil {

@@ -59,6 +59,9 @@ type problem struct {
 	params []parameter
 	traces []*measured
 	rows   int
+
+	progress    func(done, total int)
+	done, total int
 }
 
 func newProblem(ctx context.Context, e *experiment.Experiment, traces []*experiment.Trace, workers int) (*problem, error) {
