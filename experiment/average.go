@@ -50,6 +50,7 @@ func (v *evaluator) spreadPoint(ctx context.Context, values []float64, record li
 		return nil, v.place(err)
 	}
 	active := v.e.widths(v.settler.x)
+	lasts := v.nominal(values)
 	levels := make([]int, len(active))
 	now, err := v.average(ctx, values, record, samples, active, levels)
 	if err != nil {
@@ -66,14 +67,27 @@ func (v *evaluator) spreadPoint(ctx context.Context, values []float64, record li
 				}
 				change := difference(now, next)
 				now = next
-				if change <= v.e.shape.accuracy/2 {
+				if change <= v.accuracy/20 { // spare room for kinks, where a sample crosses the end of a step
 					break
 				}
 				refined = refined || len(active) > 1
 			}
 		}
 	}
+	now.lasts = lasts
 	return now, nil
+}
+
+// nominal is the recorded time of the central shot. The settler holds it.
+func (v *evaluator) nominal(values []float64) float64 {
+	s := newStates(0, 0, len(v.directions))
+	for i := range v.e.shape.steps {
+		if v.used[i] {
+			v.fill(i, -1, v.settler.x)
+		}
+	}
+	v.recorded(-1, values, 1, s)
+	return s.lasts
 }
 
 func difference(a, b *states) (largest float64) {
@@ -91,10 +105,10 @@ func (v *evaluator) average(ctx context.Context, values []float64, record lindbl
 	rules := make([]nodes, len(active))
 	shots := 1.0
 	for i := range active {
-		rules[i] = gaussianNodes(levels[i], s.accuracy)
+		rules[i] = gaussianNodes(levels[i], v.accuracy)
 		if n := len(rules[i].z); n > mostSpread {
-			return nil, &Error{File: s.file, Path: joinKey("spread", s.spreads[active[i]].name),
-				What: fmt.Sprintf("the average does not settle with %d nodes: the state turns too often across the spread; narrow it or raise accuracy", n)}
+			return nil, fmt.Errorf("%s: %s: the average does not settle with %d nodes: the state turns too often across the spread, or is not smooth along it; narrow the spread or raise accuracy",
+				s.file, joinKey("spread", s.spreads[active[i]].name), n)
 		}
 		shots *= float64(len(rules[i].z))
 	}
@@ -125,7 +139,7 @@ func (v *evaluator) average(ctx context.Context, values []float64, record lindbl
 			break
 		}
 	}
-	if lost > s.accuracy {
+	if lost > v.accuracy {
 		return nil, &Error{File: s.file, What: fmt.Sprintf("%s: that is so in a share %.2g of the shots; narrow the spread", outside, lost)}
 	}
 	out.scale(1 / kept)

@@ -16,13 +16,15 @@ import (
 // engine and the list of state columns. It does not change and is shared by
 // goroutines.
 type layout struct {
-	e       *Experiment
-	free    []field // dials with respect to which slopes are wanted
-	lab     *models.Layout
-	engine  *lindblad.Layout
-	memory  *lindblad.Memory
-	pairs   [][2]int // coherences kept
-	columns int      // numbers per state: populations, re and im of pairs, photons
+	e        *Experiment
+	free     []field // dials with respect to which slopes are wanted
+	lab      *models.Layout
+	engine   *lindblad.Layout
+	memory   *lindblad.Memory
+	pairs    [][2]int // coherences kept
+	accuracy float64
+	central  bool // spreads are left out
+	columns  int  // numbers per state: populations, re and im of pairs, photons
 }
 
 func newLayout(e *Experiment, free []field, extra [][2]int) (*layout, error) {
@@ -47,7 +49,7 @@ func newLayout(e *Experiment, free []field, extra [][2]int) (*layout, error) {
 	if err != nil {
 		return nil, err
 	}
-	l := &layout{e: e, free: free, lab: lab, engine: engine, memory: lindblad.NewMemory(0)}
+	l := &layout{e: e, free: free, lab: lab, engine: engine, memory: lindblad.NewMemory(0), accuracy: e.shape.accuracy}
 	seen := map[[2]int]bool{}
 	for _, list := range [][][2]int{s.record.coherences, s.readoutPairs(), extra} {
 		for _, p := range list {
@@ -104,7 +106,7 @@ func (l *layout) newEvaluator() *evaluator {
 	s := l.e.shape
 	v := &evaluator{layout: l, directions: l.free, settler: newSettler(l.e), used: make([]bool, len(s.steps))}
 	uses(s.sequence.order, v.used)
-	v.solver = lindblad.NewSolver(l.engine, l.memory, lindblad.Settings{Accuracy: s.accuracy})
+	v.solver = lindblad.NewSolver(l.engine, l.memory, lindblad.Settings{Accuracy: l.accuracy})
 	v.settings = models.Settings{
 		Energies: make([]dual.Number, len(s.levels)),
 		Drives:   make([]models.DriveSettings, len(s.drives)), Decays: make([]models.DecaySettings, len(s.decays)),
@@ -483,9 +485,13 @@ func (v *evaluator) point(ctx context.Context, values []float64, record lindblad
 		return nil, fmt.Errorf("%s: %w", v.e.shape.file, err)
 	}
 	if err := v.e.shape.start.check(values); err != nil {
-		return nil, fmt.Errorf("%s: %w", v.e.shape.file, err)
+		e := &Error{File: v.e.shape.file, What: err.Error()}
+		if n := v.e.shape.root.at("start.populations"); n != nil {
+			e.Line = n.line
+		}
+		return nil, e
 	}
-	if len(v.e.shape.spreads) > 0 {
+	if len(v.e.shape.spreads) > 0 && !v.central {
 		return v.spreadPoint(ctx, values, record, samples)
 	}
 	out := newStates(samples, v.columns, len(v.directions))

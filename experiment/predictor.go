@@ -20,6 +20,10 @@ type Request struct {
 	Times  []float64   // recorded times (s) in place of points, not decreasing
 	Shows  string      // column: "signal" (the default), "population.e", "coherence.g:e.re"
 	Free   []string    // dials with respect to which slopes are wanted
+	// Accuracy replaces the experiment's; default (0): that of the file.
+	Accuracy float64
+	// Central leaves the spreads out: every shot is the central one.
+	Central bool
 	// Workers is the number of goroutines; default (0): one for each processor.
 	Workers int
 }
@@ -78,6 +82,10 @@ func NewPredictor(e *Experiment, r Request) (*Predictor, error) {
 	if p.layout, err = newLayout(e, p.free, pairs); err != nil {
 		return nil, err
 	}
+	if r.Accuracy > 0 {
+		p.layout.accuracy = r.Accuracy
+	}
+	p.layout.central = r.Central
 	workers := r.Workers
 	if workers <= 0 {
 		workers = runtime.GOMAXPROCS(0)

@@ -126,11 +126,12 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 	if err != nil {
 		return nil, nil, err
 	}
-	rough := p.bounded()
-	rough.Tolerance, rough.Iterations, rough.Restarts = 1e-3, 60, -1
+	quick := p.bounded()
+	quick.Tolerance, quick.Iterations, quick.Restarts = 1e-2, 40, -1
+	p.use(rough)
 	var all []*Result
 	for _, s := range starts {
-		r, err := LeastSquares(p.model, p.rows, s.params, rough)
+		r, err := LeastSquares(p.model, p.rows, s.params, quick)
 		if err != nil {
 			if p.ctx.Err() != nil {
 				return nil, nil, p.ctx.Err()
@@ -146,10 +147,14 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 		return nil, nil, fmt.Errorf("%s: the model cannot be evaluated near the file's values; check the start values and bounds of the unknowns", p.e.File())
 	}
 	for _, r := range all {
-		if r != best && p.different(r.Params, best) && r.ChiSquare < best.ChiSquare+4*p.unit(best) {
+		if r == best || !p.different(r.Params, best) || r.ChiSquare > best.ChiSquare+4*p.unit(best) {
+			continue
+		}
+		if len(others) == 0 || p.different(r.Params, others[0]) {
 			others = append(others, r)
 		}
 	}
+	p.use(exact)
 	fine := p.bounded()
 	fine.Tolerance, fine.Iterations, fine.Restarts = 1e-5, 300, 2
 	for pass := range 3 {
@@ -241,7 +246,8 @@ func spreadOf(y []float64) float64 {
 func (p *problem) different(params []float64, best *Result) bool {
 	se := best.StandardErrors()
 	for i := range params {
-		if p.isFactor(i) || !(se[i] > 0) || math.IsInf(se[i], 0) {
+		// A phase may differ by half a turn when a scale changes sign.
+		if p.isFactor(i) || p.params[i].dial.Unit == "rad" || !(se[i] > 0) || math.IsInf(se[i], 0) {
 			continue
 		}
 		if math.Abs(params[i]-best.Params[i]) > 5*se[i] {

@@ -20,7 +20,6 @@ type place struct {
 const (
 	mostScan = 3000 // points along one unknown
 	begins   = 6    // searches
-	rounds   = 2    // passes over the unknowns
 )
 
 // starts finds where to begin, best first; the file's own values come too.
@@ -48,27 +47,51 @@ func (p *problem) starts() ([]place, error) {
 		}
 	}
 	// Frequencies are scanned for several settings of what damps or scales
-	// them: with too short a decay there is no fringe to find.
-	bases := p.settings(own, other, axes)
-	for _, axis := range axes {
-		p.total += len(bases) * rounds * len(axis)
+	// them: with too short a decay there is no fringe to find. Spreads only damp
+	// a fringe and are left out for this.
+	bases := [][]float64{own}
+	if len(oscillating) > 0 {
+		bases = p.settings(own, other, axes)
 	}
+	for _, axis := range axes {
+		p.total += len(bases) * len(axis)
+	}
+	p.use(central)
+	var fringes []place
 	for _, base := range bases {
-		best := base
-		for range rounds {
-			for _, i := range append(append([]int(nil), oscillating...), other...) {
-				line, err := p.along(best, i, axes[i])
-				if err != nil {
-					return nil, err
-				}
-				found = append(found, line...)
-				if len(line) > 0 {
-					best = line[0].params
-				}
+		for _, i := range oscillating {
+			line, err := p.along(base, i, axes[i])
+			if err != nil {
+				return nil, err
 			}
-			if len(axes) == 1 {
-				break
+			fringes = append(fringes, line...)
+		}
+	}
+	sort.SliceStable(fringes, func(i, j int) bool { return fringes[i].left < fringes[j].left })
+	p.use(rough)
+	candidates := append([]place{first}, fringes[:min(len(fringes), begins)]...)
+	for _, c := range candidates {
+		best := c
+		for _, i := range other {
+			line, err := p.along(best.params, i, axes[i])
+			if err != nil {
+				return nil, err
 			}
+			found = append(found, line[min(len(line), 1):]...)
+			if len(line) > 0 && line[0].left < best.left || best.left == c.left && len(line) > 0 {
+				best = line[0]
+			}
+		}
+		found = append(found, best)
+	}
+	if len(oscillating) > 1 { // each frequency again, beside the others
+		sort.SliceStable(found, func(i, j int) bool { return found[i].left < found[j].left })
+		for _, i := range oscillating {
+			line, err := p.along(found[0].params, i, axes[i])
+			if err != nil {
+				return nil, err
+			}
+			found = append(found, line...)
 		}
 	}
 	sort.SliceStable(found, func(i, j int) bool { return found[i].left < found[j].left })
@@ -88,7 +111,7 @@ func (p *problem) settings(own []float64, other []int, axes [][]float64) [][]flo
 			}
 		}
 	}
-	return list[:min(len(list), 7)]
+	return list[:min(len(list), 5)]
 }
 
 // along scans one unknown and returns the lowest places, best first.

@@ -23,8 +23,11 @@ type parameter struct {
 // measured is one trace with what predicts it.
 type measured struct {
 	trace     *experiment.Trace
-	predictor *experiment.Predictor
-	free      []int // parameters that are free dials of the predictor, in its order
+	predictor *experiment.Predictor // the one in use: exact, rough or central
+	exact     *experiment.Predictor
+	rough     *experiment.Predictor // to an accuracy that a search needs
+	central   *experiment.Predictor // rough, without spreads: where they only damp a fringe
+	free      []int                 // parameters that are free dials of the predictor, in its order
 	scale     factor
 	offset    factor
 	y         []float64
@@ -160,10 +163,18 @@ func (p *problem) measure(t int, tr *experiment.Trace, workers int) error {
 			m.free = append(m.free, i)
 		}
 	}
-	m.predictor, err = experiment.NewPredictor(e, experiment.Request{Dials: tr.Dials, Points: tr.Points, Times: tr.Times, Shows: tr.Shows, Free: free, Workers: workers})
-	if err != nil {
-		return err
+	request := experiment.Request{Dials: tr.Dials, Points: tr.Points, Times: tr.Times, Shows: tr.Shows, Free: free, Workers: workers}
+	for _, q := range []struct {
+		to       **experiment.Predictor
+		accuracy float64
+		central  bool
+	}{{&m.exact, 0, false}, {&m.rough, 1e-4, false}, {&m.central, 1e-4, true}} {
+		request.Accuracy, request.Central = q.accuracy, q.central
+		if *q.to, err = experiment.NewPredictor(e, request); err != nil {
+			return err
+		}
 	}
+	m.predictor = m.exact
 	if len(tr.Dials) > 0 {
 		d, err := e.Dial(tr.Dials[0])
 		if err != nil {
@@ -209,6 +220,17 @@ func byTime(tr *experiment.Trace) *experiment.Trace {
 	sorted.Times, sorted.Y, sorted.Error, sorted.Shots = pick(tr.Times), pick(tr.Y), pick(tr.Error), pick(tr.Shots)
 	return &sorted
 }
+
+// use chooses the predictors of all traces.
+func (p *problem) use(which func(m *measured) *experiment.Predictor) {
+	for _, m := range p.traces {
+		m.predictor = which(m)
+	}
+}
+
+func exact(m *measured) *experiment.Predictor   { return m.exact }
+func rough(m *measured) *experiment.Predictor   { return m.rough }
+func central(m *measured) *experiment.Predictor { return m.central }
 
 // predict evaluates the model of a trace, with slopes when wanted.
 func (m *measured) predict(ctx context.Context, params []float64, slopes bool) error {

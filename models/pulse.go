@@ -43,6 +43,8 @@ type envelope struct {
 	work  []dual.Number
 }
 
+var _ lindblad.Series = (*envelope)(nil)
+
 func (p *Pulse) envelope(slope bool) lindblad.Envelope {
 	q := *p
 	return &envelope{p: &q, slope: slope}

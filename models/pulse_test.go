@@ -7,6 +7,8 @@ import (
 	"github.com/stretchr/testify/assert"
 	"gonum.org/v1/gonum/integrate/quad"
 	"gonum.org/v1/gonum/num/dual"
+
+	"rhotrace/lindblad"
 )
 
 func pulses() map[string]*Pulse {
@@ -69,7 +71,7 @@ func TestPulsesAndTheirSeries(t *testing.T) {
 			assert.InDelta(t, plainly(p, at), value.At(at), 1e-14, "%s at %g", name, at)
 			// The series sums to the course a little later.
 			c := make([]float64, 30)
-			value.Taylor(at, c)
+			value.(lindblad.Series).Taylor(at, c)
 			sum, tau := 0.0, 0.01
 			for k := len(c) - 1; k >= 0; k-- {
 				sum = sum*tau + c[k]
