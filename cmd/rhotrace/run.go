@@ -40,7 +40,7 @@ type session struct {
 // the exit status.
 func run(ctx context.Context, args []string, in io.Reader, out, errOut io.Writer, isTerminal func(stream any) bool) int {
 	s := &session{in: in, out: bufio.NewWriterSize(out, 64<<10), rawOut: out, errOut: errOut, isTerminal: isTerminal}
-	s.verbs = []*cli.Command{s.predict(), s.fit(), s.dials(), s.keys(), s.version(), s.completion(), s.offer()}
+	s.verbs = []*cli.Command{s.predict(), s.fit(), s.dials(), s.verify(), s.keys(), s.version(), s.completion(), s.offer()}
 	err := s.dispatch(ctx, args)
 	if flushed := s.out.Flush(); err == nil && flushed != nil {
 		err = outputError(flushed)
