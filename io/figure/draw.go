@@ -137,9 +137,11 @@ func (pl *plane) drawBand(p *pen, i int, l Line) {
 		}
 		lower, upper = nil, nil
 	}
-	known := func(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }
 	for k := range l.Low {
-		if !pl.X.usable(l.X[k]) || !known(l.Low[k]) || !known(l.High[k]) {
+		// A band that ends below a logarithmic axis is drawn down to the frame;
+		// one that begins there is not seen.
+		finite := !math.IsInf(l.Low[k], 0) && !math.IsInf(l.High[k], 0)
+		if !pl.X.usable(l.X[k]) || !finite || !pl.Y.usable(max(l.Low[k], l.High[k])) {
 			flush()
 			continue
 		}

@@ -46,15 +46,16 @@ func scaleFor(unit string, low, high float64, log bool) scale {
 		return s
 	}
 	power := 3 * int(math.Floor(math.Log10(largest*(1+1e-9))/3))
-	prefix := 0
 	if highest, ok := prefixed[unit]; ok {
-		prefix = min(max(power, -15), highest)
-		s.unit = prefixes[prefix] + s.unit
-		s.size = math.Pow10(prefix)
+		prefix := min(max(power, -15), highest)
+		if left := largest / math.Pow10(prefix); left >= 0.01 && left < 1e5 {
+			s.size, s.unit = math.Pow10(prefix), prefixes[prefix]+s.unit
+			return s
+		}
 	}
-	if left := largest / s.size; left < 0.01 || left >= 1e5 {
+	if largest < 0.01 || largest >= 1e5 {
 		s.size = math.Pow10(power)
-		s.unit = strings.TrimSpace("10" + superscript(strconv.Itoa(power-prefix)) + " " + s.unit)
+		s.unit = strings.TrimSpace("10" + superscript(strconv.Itoa(power)) + " " + s.unit)
 	}
 	return s
 }

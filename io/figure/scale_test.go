@@ -25,6 +25,7 @@ func TestScale(t *testing.T) {
 		{"s", 0, 250e-9, false, "ns", 250},
 		{"s", 0, 7200, false, "s", 7200},
 		{"s", 0, 2e6, false, "10⁶ s", 2},
+		{"s", 0, 4e-21, false, "10⁻²¹ s", 4},
 		{"Hz", -5e3, 5e3, false, "kHz", 5},
 		{"Hz", 0, 6.07e6, false, "MHz", 6.07},
 		{"Hz", 0, 4.29e14, false, "THz", 429},
