@@ -135,21 +135,24 @@ func TestPDF(t *testing.T) {
 }
 
 func TestSameBytes(t *testing.T) {
+	first, second := measured(), measured()
+	first.Width, first.Height = 8, 8
+	second.Width, second.Height = 8, 8
 	for _, format := range []string{"svg", "png"} {
-		assert.True(t, bytes.Equal(written(t, measured(), format), written(t, measured(), format)), format)
+		assert.True(t, bytes.Equal(written(t, first, format), written(t, second, format)), format)
 	}
 }
 
 // TestMap looks at the cells of a map inside its SVG.
 func TestMap(t *testing.T) {
-	f := &figure.Figure{Panels: []figure.Panel{{
+	f := &figure.Figure{Width: 9, Height: 6, Panels: []figure.Panel{{
 		X: figure.Axis{Label: "Pulse", Unit: "s"}, Y: figure.Axis{Label: "Detuning", Unit: "Hz"},
 		Map: &figure.Map{X: []float64{1e-6, 2e-6, 3e-6}, Y: []float64{-1e3, 1e3},
 			Values: [][]float64{{0, 0.5}, {0.25, math.NaN()}, {0.75, 1}}, Value: figure.Axis{Label: "Population"}},
 	}}}
 	svg := written(t, f, "svg")
 	got := texts(t, svg)
-	for _, want := range []string{"Pulse (µs)", "Detuning (kHz)", "Population", "−1.0", "3.0"} {
+	for _, want := range []string{"Pulse (µs)", "Detuning (kHz)", "Population", "−1", "3"} {
 		assert.Contains(t, got, want)
 	}
 	assert.NotContains(t, string(svg), "image/jpg")
@@ -206,7 +209,7 @@ func TestOdd(t *testing.T) {
 		"long words":       {X: figure.Axis{Label: strings.Repeat("w", 300)}, Y: figure.Axis{Label: strings.Repeat("long label ", 9)}, Lines: []figure.Line{{Label: strings.Repeat("i", 900), X: []float64{1, 2}, Y: []float64{1, 2}}, {Label: "<&>", X: []float64{1, 2}, Y: []float64{1, 2}}}},
 	} {
 		t.Run(name, func(t *testing.T) {
-			f := &figure.Figure{Panels: []figure.Panel{panel}}
+			f := &figure.Figure{Width: 9, Height: 8, Panels: []figure.Panel{panel}}
 			svg := written(t, f, "svg")
 			texts(t, svg)
 			assert.NotRegexp(t, "NaN|Inf", string(svg))
@@ -242,6 +245,7 @@ func TestRefused(t *testing.T) {
 		assert.ErrorContains(t, f.Write(io.Discard, "svg"), want)
 	}
 	f := with(good)
+	f.Width, f.Height = 6, 5
 	assert.ErrorContains(t, f.Write(io.Discard, "gif"), `unknown format "gif"; use png, svg or pdf`)
 	for _, format := range figure.Formats {
 		assert.ErrorContains(t, f.Write(full{}, format), "no space left")
