@@ -99,6 +99,8 @@ type evaluator struct {
 	rho        []complex128
 	drho       []complex128
 	used       []bool
+	line       []float64 // durations of step lineStep that are run together; nil: one point
+	lineStep   int
 	notUnique  bool // some steady state was not the only one
 }
 
@@ -372,14 +374,17 @@ func (v *evaluator) shot(ctx context.Context, values, z []float64, weight float6
 		v.recorded(j, values, weight, into)
 	}
 	v.order = tree(v.order, s.sequence.order, values)
+	emit := func(k int, x []float64, dx [][]float64) error {
+		v.collect(k, x, dx, values, z, weight, into)
+		return nil
+	}
 	if s.record.steady && record.Times == nil {
 		return v.steady(ctx, values, z, weight, into)
 	}
-	return v.solver.Run(ctx, v.x0, v.dx0[:len(v.directions)], v.stretches, v.order, record,
-		func(k int, x []float64, dx [][]float64) error {
-			v.collect(k, x, dx, values, z, weight, into)
-			return nil
-		})
+	if v.line != nil {
+		return v.solver.Fan(ctx, v.x0, v.dx0[:len(v.directions)], v.stretches, v.order, v.lineStep, v.line, emit)
+	}
+	return v.solver.Run(ctx, v.x0, v.dx0[:len(v.directions)], v.stretches, v.order, record, emit)
 }
 
 // steady adds the state to which the order leads when it is repeated without

@@ -37,6 +37,8 @@ type Predictor struct {
 	dials   []field
 	free    []field
 	layout  *layout
+	cuts    [][2]int // points that are run together
+	step    int      // the step whose duration they differ in
 	workers []*evaluator
 	base    []float64
 }
@@ -86,6 +88,15 @@ func NewPredictor(e *Experiment, r Request) (*Predictor, error) {
 		p.layout.accuracy = r.Accuracy
 	}
 	p.layout.central = r.Central
+	column := -1
+	if p.step = -1; len(p.dials) > 0 {
+		column = len(p.dials) - 1
+		p.step = e.lineStep(p.dials[column])
+	}
+	if p.step < 0 || contains(p.free, p.dials[column]) {
+		column = -1
+	}
+	p.cuts = lines(r.Points, column)
 	workers := r.Workers
 	if workers <= 0 {
 		workers = runtime.GOMAXPROCS(0)
@@ -93,7 +104,7 @@ func NewPredictor(e *Experiment, r Request) (*Predictor, error) {
 	if len(r.Times) > 0 {
 		workers = 1
 	}
-	for range max(1, min(workers, len(r.Points))) {
+	for range max(1, min(workers, len(p.cuts))) {
 		p.workers = append(p.workers, p.layout.newEvaluator())
 	}
 	return p, nil
@@ -200,11 +211,8 @@ func (p *Predictor) Evaluate(ctx context.Context, free []float64, y []float64, d
 		go func() {
 			defer wait.Done()
 			values := append([]float64(nil), p.base...)
-			for i := w; i < len(p.request.Points) && errs[w] == nil; i += len(p.workers) {
-				for k, f := range p.dials {
-					values[f] = p.request.Points[i][k]
-				}
-				errs[w] = p.row(ctx, v, values, i, y, dy)
+			for c := w; c < len(p.cuts) && errs[w] == nil; c += len(p.workers) {
+				errs[w] = p.rows(ctx, v, values, p.cuts[c], y, dy)
 			}
 		}()
 	}
@@ -217,12 +225,39 @@ func (p *Predictor) Evaluate(ctx context.Context, free []float64, y []float64, d
 	return nil
 }
 
-func (p *Predictor) row(ctx context.Context, v *evaluator, values []float64, i int, y []float64, dy [][]float64) error {
-	st, err := v.point(ctx, values, lindblad.Record{During: -1}, 1)
-	if err != nil {
-		return err
+func contains(list []field, f field) bool {
+	for _, g := range list {
+		if g == f {
+			return true
+		}
 	}
-	return p.read(v, values, st, 0, i, y, dy)
+	return false
+}
+
+// rows evaluates the points of one cut.
+func (p *Predictor) rows(ctx context.Context, v *evaluator, values []float64, cut [2]int, y []float64, dy [][]float64) error {
+	set := func(i int) {
+		for k, f := range p.dials {
+			values[f] = p.request.Points[i][k]
+		}
+	}
+	set(cut[0])
+	var st *states
+	var err error
+	if n := cut[1] - cut[0]; n == 1 {
+		st, err = v.point(ctx, values, lindblad.Record{During: -1}, 1)
+	} else {
+		durations := make([]float64, n)
+		for i := range durations {
+			durations[i] = p.request.Points[cut[0]+i][len(p.dials)-1]
+		}
+		st, err = v.runLine(ctx, values, p.step, durations)
+	}
+	for i := cut[0]; i < cut[1] && err == nil; i++ {
+		set(i)
+		err = p.read(v, values, st, i-cut[0], i, y, dy)
+	}
+	return err
 }
 
 // recorded evaluates the answers at recorded times.

@@ -40,17 +40,44 @@ func RunWith(ctx context.Context, e *Experiment, set Settings) (*table.Table, er
 	rec := lindblad.Record{Samples: e.shape.record.samples, During: e.shape.record.during}
 	samples := max(1, rec.Samples)
 	out := newRows(e, l, points, samples)
-	stats, warnings, err := each(ctx, l, len(points.rows), set, func(v *evaluator, i int) error {
-		values := points.values(e.values, i)
-		st, err := v.point(ctx, values, rec, samples)
-		if err != nil {
-			return points.locate(e, i, err)
+	column, step := len(points.dials)-1, -1
+	if column >= 0 {
+		step = e.lineStep(points.dials[column])
+	}
+	if step < 0 {
+		column = -1
+	}
+	cuts := lines(points.rows, column)
+	stats, warnings, err := each(ctx, l, len(cuts), set, func(v *evaluator, c int) error {
+		a, b := cuts[c][0], cuts[c][1]
+		values := points.values(e.values, a)
+		if b-a == 1 {
+			st, err := v.point(ctx, values, rec, samples)
+			if err != nil {
+				return points.locate(e, a, err)
+			}
+			return points.locate(e, a, out.put(v, a, values, st, 0))
 		}
-		return points.locate(e, i, out.put(v, i, values, st))
+		durations := make([]float64, b-a)
+		for i := range durations {
+			durations[i] = points.rows[a+i][column]
+		}
+		st, err := v.runLine(ctx, values, step, durations)
+		if err != nil {
+			return points.locate(e, a, err)
+		}
+		for i := a; i < b; i++ {
+			values[points.dials[column]] = points.rows[i][column]
+			if err := out.put(v, i, values, st, i-a); err != nil {
+				return points.locate(e, i, err)
+			}
+		}
+		return nil
 	})
 	if err != nil {
 		return nil, err
 	}
+	stats.Points = len(points.rows)
 	return out.table(stats, append(e.Warnings(), warnings...))
 }
 
@@ -70,7 +97,7 @@ func each(ctx context.Context, l *layout, n int, set Settings, do func(v *evalua
 		mu          sync.Mutex
 		failedAt    = n
 		failed      error
-		stats       = Statistics{Points: n}
+		stats       Statistics
 		allWarnings = map[string]bool{}
 	)
 	work := func() {
@@ -249,8 +276,8 @@ func (s *shape) stateHeads(e *Experiment) (list []head) {
 	return list
 }
 
-// put writes the rows of point i.
-func (r *rows) put(v *evaluator, i int, values []float64, st *states) error {
+// put writes the rows of point i, from the states that begin at first.
+func (r *rows) put(v *evaluator, i int, values []float64, st *states, first int) error {
 	s := r.e.shape
 	if err := v.settler.settle(values, none, nil); err != nil {
 		return v.place(err)
@@ -265,7 +292,7 @@ func (r *rows) put(v *evaluator, i int, values []float64, st *states) error {
 		if r.hasTime {
 			add(spacedValue(0, st.lasts, k, r.samples, false))
 		}
-		state := st.values[k]
+		state := st.values[first+k]
 		for a := range s.levels {
 			add(tidy(state[a]))
 		}

@@ -28,7 +28,6 @@ type compiled struct {
 	a, b int
 	k    sparse
 	ops  []sparse // jumps, one after the other; a cross jump has two
-	row  []float64
 }
 
 // columns applies pieces to basis matrices and gathers the result, element by

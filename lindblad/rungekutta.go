@@ -26,8 +26,6 @@ type carry struct {
 	slope []float64 // along one direction
 	vals  []float64 // generator on the pattern
 	scale []float64 // of each direction, so that one error bound serves all
-	start float64
-	theta []float64
 }
 
 // coefficients sets c.coef to those at time t of the stretch.

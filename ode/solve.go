@@ -147,13 +147,13 @@ func (s *Solver) check(t0 float64, times []float64) error {
 	set := &s.set
 	switch {
 	case !(set.Accuracy > 0) || !finite(set.Accuracy):
-		return fmt.Errorf("Accuracy is %g, must be positive: %w", set.Accuracy, ErrSettings)
+		return fmt.Errorf("settings: Accuracy is %g, must be positive: %w", set.Accuracy, ErrSettings)
 	case !(set.FirstStep >= 0) || !finite(set.FirstStep):
-		return fmt.Errorf("FirstStep is %g, must be a positive size: %w", set.FirstStep, ErrSettings)
+		return fmt.Errorf("settings: FirstStep is %g, must be a positive size: %w", set.FirstStep, ErrSettings)
 	case !(set.LargestStep > 0):
-		return fmt.Errorf("LargestStep is %g, must be a positive size: %w", set.LargestStep, ErrSettings)
+		return fmt.Errorf("settings: LargestStep is %g, must be a positive size: %w", set.LargestStep, ErrSettings)
 	case set.MostSteps < 0:
-		return fmt.Errorf("MostSteps is %d, must be positive: %w", set.MostSteps, ErrSettings)
+		return fmt.Errorf("settings: MostSteps is %d, must be positive: %w", set.MostSteps, ErrSettings)
 	case !finite(t0):
 		return fmt.Errorf("first time is %g: %w", t0, ErrTimes)
 	}
