@@ -182,3 +182,49 @@ when = "steady"
 	_, err = Read("x.toml", []byte(strings.Replace(text, "when = \"steady\"", "", 1)))
 	require.ErrorContains(t, err, "step.p")
 }
+
+// A second drive on the pair closes a loop that turns with its own detuning: two
+// ideal quarter turns, one by each drive, leave cos² of half the phase that the
+// second one has run ahead by, P_e = ½(1 + cos 2πΔT) in the frame of the first
+// drive at rest on resonance.
+func TestIdealRotationsOfADriveInALoop(t *testing.T) {
+	text := `format = 1
+[level.g]
+[level.e]
+[drive.a]
+between = ["g", "e"]
+rabi = "10 kHz"
+[drive.b]
+between = ["g", "e"]
+rabi = "5 kHz"
+detuning = "-2 kHz"
+[step.first]
+on = ["a"]
+area = "0.5 pi"
+lasts = "0 s"
+[step.wait]
+lasts = "130 us"
+[step.second]
+on = ["b"]
+area = "0.5 pi"
+lasts = "0 s"
+[sequence]
+order = "first wait second"
+`
+	e, err := Read("x.toml", []byte(text))
+	require.NoError(t, err)
+	out, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	assert.InDelta(t, 0.5*(1+math.Cos(2*math.Pi*2e3*130e-6)), out.Column("population.e").Values[0], 1e-8)
+}
+
+// An amplitude given by area and duration is solved for from the duration as
+// user dials leave it: half as long again, and the area stays.
+func TestAreaSeesUserDials(t *testing.T) {
+	text := strings.Replace(resonant, "SHAPE", "", 1) + "[dial.more]\nturns = { \"step.p.lasts\" = 1 }\nvalue = \"350 ns\"\n"
+	e, err := Read("x.toml", []byte(text))
+	require.NoError(t, err)
+	out, err := Run(context.Background(), e)
+	require.NoError(t, err)
+	assert.InDelta(t, math.Pow(math.Sin(0.35*math.Pi), 2), out.Column("population.e").Values[0], 1e-8)
+}
