@@ -130,12 +130,14 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 	quick.Tolerance, quick.Iterations, quick.Restarts = 1e-2, 40, -1
 	p.use(rough)
 	var all []*Result
+	var failed error
 	for _, s := range starts {
 		r, err := LeastSquares(p.model, p.rows, s.params, quick)
 		if err != nil {
 			if p.ctx.Err() != nil {
 				return nil, nil, p.ctx.Err()
 			}
+			failed = err
 			continue
 		}
 		all = append(all, r)
@@ -144,7 +146,7 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 		}
 	}
 	if best == nil {
-		return nil, nil, fmt.Errorf("%s: the model cannot be evaluated near the file's values; check the start values and bounds of the unknowns", p.e.File())
+		return nil, nil, fmt.Errorf("%s: no search for the unknowns came to an end; check their start values and bounds: %w", p.e.File(), failed)
 	}
 	for _, r := range all {
 		if r == best || !p.different(r.Params, best) || r.ChiSquare > best.ChiSquare+4*p.unit(best) {
@@ -264,13 +266,22 @@ func (p *problem) answer(r *Result, others []*Result) (*Answer, error) {
 	n := len(p.params)
 	c := r.Correlation()
 	for i, u := range p.params {
-		v := r.Params[i]
-		x := Unknown{Name: u.name, Dial: u.dial.Path, Unit: u.dial.Unit, Value: v, Error: se[i], Low: math.Max(u.low, v-se[i]), High: math.Min(u.high, v+se[i]), dial: u.dial}
+		q := r.Params[i]
+		v := u.scale.value(q)
+		x := Unknown{Name: u.name, Dial: u.dial.Path, Unit: u.dial.Unit, Value: v, Error: se[i] * math.Abs(u.scale.slope(q)), dial: u.dial}
+		a1, b1 := u.scale.value(math.Max(u.low, q-se[i])), u.scale.value(math.Min(u.high, q+se[i]))
+		x.Low, x.High = math.Min(a1, b1), math.Max(a1, b1)
 		if math.IsNaN(se[i]) {
 			x.Low, x.High = v, v
 		}
 		a.Unknowns = append(a.Unknowns, x)
-		a.Correlation = append(a.Correlation, c[i*n:(i+1)*n])
+		row := append([]float64(nil), c[i*n:(i+1)*n]...)
+		for j := range row { // a rate falls as its lifetime grows
+			if (u.scale == rateScale) != (p.params[j].scale == rateScale) {
+				row[j] = -row[j]
+			}
+		}
+		a.Correlation = append(a.Correlation, row)
 	}
 	if err := p.fitted(a, r); err != nil {
 		return nil, err
@@ -310,7 +321,7 @@ func (p *problem) fitted(a *Answer, r *Result) (err error) {
 	var turns []experiment.Turn
 	for i, u := range p.params {
 		if u.trace < 0 || len(p.traces) == 1 || p.isFactor(i) {
-			turns = append(turns, experiment.Turn{Path: u.dial.Path, Value: r.Params[i]})
+			turns = append(turns, experiment.Turn{Path: u.dial.Path, Value: u.scale.value(r.Params[i])})
 		}
 	}
 	a.Fitted, err = p.e.With(turns...)
@@ -321,7 +332,7 @@ func (p *problem) fitted(a *Answer, r *Result) (err error) {
 func (p *problem) ownValues(m *measured, r *Result) (*experiment.Experiment, error) {
 	turns := append([]experiment.Turn(nil), m.trace.At...)
 	for _, i := range m.free {
-		turns = append(turns, experiment.Turn{Path: p.params[i].dial.Path, Value: r.Params[i]})
+		turns = append(turns, experiment.Turn{Path: p.params[i].dial.Path, Value: p.params[i].scale.value(r.Params[i])})
 	}
 	return p.e.With(turns...)
 }

@@ -39,7 +39,7 @@ func (p *problem) starts() ([]place, error) {
 		if p.isFactor(i) {
 			continue
 		}
-		axes[i] = p.axis(i)
+		axes[i] = p.places(i)
 		if len(axes[i]) > 40 {
 			oscillating = append(oscillating, i)
 		} else {
@@ -144,8 +144,7 @@ next:
 			near := true
 			for i := range f.params {
 				if n := len(axes[i]); n > 1 {
-					step := math.Abs(axes[i][n-1]-axes[i][0]) / float64(n-1)
-					near = near && math.Abs(f.params[i]-k.params[i]) <= 2*step
+					near = near && math.Abs(rank(axes[i], f.params[i])-rank(axes[i], k.params[i])) <= 2
 				}
 			}
 			if near {
@@ -159,6 +158,9 @@ next:
 	return kept
 }
 
+// rank is the place of a value among the sorted values of an axis.
+func rank(axis []float64, v float64) float64 { return float64(sort.SearchFloat64s(axis, v)) }
+
 // isFactor reports whether a parameter is the scale or offset of a trace.
 func (p *problem) isFactor(i int) bool {
 	for _, m := range p.traces {
@@ -167,6 +169,26 @@ func (p *problem) isFactor(i int) bool {
 		}
 	}
 	return false
+}
+
+// places is axis on the scale of the search, increasing.
+func (p *problem) places(i int) []float64 {
+	u := p.params[i]
+	if u.scale == plainScale {
+		return p.axis(i)
+	}
+	plain := *p
+	plain.params = append([]parameter(nil), p.params...)
+	one := &plain.params[i]
+	one.start, one.low, one.high = u.scale.value(u.start), u.scale.value(u.low), u.scale.value(u.high)
+	one.low, one.high = math.Min(one.low, one.high), math.Max(one.low, one.high)
+	one.scale = plainScale
+	var out []float64
+	for _, v := range plain.axis(i) {
+		out = append(out, u.scale.place(v))
+	}
+	sort.Float64s(out)
+	return out
 }
 
 // axis lists the values of an unknown that are worth a look.

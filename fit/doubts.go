@@ -19,6 +19,14 @@ func (p *problem) doubts(a *Answer, r *Result, others []*Result) {
 	}
 	for _, i := range r.AtBound {
 		u := &a.Unknowns[i]
+		if limit, open := p.limit(r, i); open {
+			word := "longer than"
+			if p.params[i].scale == squareScale {
+				word = "less than"
+			}
+			warn("%s is not constrained by these data: %s about %s (95 %%), and any value beyond fits as well", u.Name, word, u.Format(roundTo(limit, 2)))
+			continue
+		}
 		warn("%s stands at its bound %s; widen low and high, or the data say nothing about it", u.Name, u.Format(u.Value))
 	}
 	for i := range a.Unknowns {
@@ -67,11 +75,29 @@ func (p *problem) openUnknown(a *Answer, i int, warn func(string, ...any)) {
 	}
 }
 
+// limit is the one-sided limit of an unknown that stands where nothing could be
+// seen of it: 1.645 conditional standard errors from there.
+func (p *problem) limit(r *Result, i int) (limit float64, open bool) {
+	u := &p.params[i]
+	if u.scale == plainScale || math.Abs(r.Params[i]-u.low) > 1e-9*math.Abs(u.low) {
+		return 0, false
+	}
+	sum := 0.0
+	for row := range r.Residuals {
+		j := r.Jacobian[row*len(p.params)+i]
+		sum += j * j
+	}
+	if !(sum > 0) {
+		return 0, false
+	}
+	return u.scale.value(r.Params[i] + 1.645*math.Sqrt(p.unit(r)/sum)), true
+}
+
 func (p *problem) describe(a *Answer, params []float64) string {
 	var parts []string
 	for i := range a.Unknowns {
 		if !p.isFactor(i) {
-			parts = append(parts, a.Unknowns[i].Name+" = "+a.Unknowns[i].Format(roundTo(params[i], 4)))
+			parts = append(parts, a.Unknowns[i].Name+" = "+a.Unknowns[i].Format(roundTo(p.params[i].scale.value(params[i]), 4)))
 		}
 	}
 	return strings.Join(parts, ", ")

@@ -11,13 +11,14 @@ import (
 )
 
 // parameter is one number that a fit turns: an unknown, or its value for one
-// trace.
+// trace. start, low and high are in the scale of the search, see scale.go.
 type parameter struct {
 	name      string
 	dial      experiment.Dial
 	trace     int // −1: of all traces
 	start     float64
 	low, high float64
+	scale     searchScale
 }
 
 // measured is one trace with what predicts it.
@@ -37,6 +38,7 @@ type measured struct {
 	from      int    // first row among all residuals
 	unit      string // of what is scanned first
 
+	scales []searchScale // of the free parameters
 	values []float64
 	pred   []float64
 	slopes [][]float64
@@ -96,6 +98,7 @@ func newProblem(ctx context.Context, e *experiment.Experiment, traces []*experim
 			return nil, err
 		}
 	}
+	p.rescale()
 	return p, nil
 }
 
@@ -235,13 +238,21 @@ func central(m *measured) *experiment.Predictor { return m.central }
 // predict evaluates the model of a trace, with slopes when wanted.
 func (m *measured) predict(ctx context.Context, params []float64, slopes bool) error {
 	for j, i := range m.free {
-		m.values[j] = params[i]
+		m.values[j] = m.scales[j].value(params[i])
 	}
-	var dy [][]float64
-	if slopes {
-		dy = m.slopes
+	if !slopes {
+		return m.predictor.Evaluate(ctx, m.values, m.pred, nil)
 	}
-	return m.predictor.Evaluate(ctx, m.values, m.pred, dy)
+	if err := m.predictor.Evaluate(ctx, m.values, m.pred, m.slopes); err != nil {
+		return err
+	}
+	for j, i := range m.free {
+		f := m.scales[j].slope(params[i])
+		for k := range m.slopes[j] {
+			m.slopes[j][k] *= f
+		}
+	}
+	return nil
 }
 
 // model is the LeastSquares model of all traces. A value that pushes a dial out
@@ -283,7 +294,8 @@ func (p *problem) model(params, residuals, jacobian []float64) error {
 
 func (p *problem) inside(params []float64) bool {
 	for i, v := range params {
-		if v < p.params[i].dial.Low || v > p.params[i].dial.High {
+		u := &p.params[i]
+		if x := u.scale.value(v); !(x >= u.dial.Low && x <= u.dial.High) {
 			return false
 		}
 	}
