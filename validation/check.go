@@ -11,8 +11,8 @@ import (
 // Check is one number that the literature, or an independent computation with
 // more digits, says and that this program must find.
 type Check struct {
-	Name      string
-	Source    string
+	Name      string // at most 33 characters, so that a check fits a line
+	Source    string // at most 37 characters, journals abbreviated
 	Status    Status
 	Expected  float64
 	Tolerance float64 // largest difference allowed
@@ -24,14 +24,11 @@ type Check struct {
 type Status string
 
 const (
-	// Formula: a closed form from the literature, evaluated to the digits given.
-	Formula Status = "closed form"
-	// Published: a number as printed in a publication or standard.
-	Published Status = "published"
-	// Vectors: an independent computation with 90 digits.
-	Vectors Status = "90 digits"
-	// Recomputed: a number found by an independent program, to the digits given.
+	// Recomputed: the formula or procedure of the source, evaluated by an
+	// independent program that confirmed it against the equations of motion.
 	Recomputed Status = "recomputed"
+	// Memory: the formula of the source, quoted from memory.
+	Memory Status = "from memory"
 )
 
 // Outcome is a check with what was found.
@@ -45,13 +42,20 @@ type Outcome struct {
 // Run carries out a check.
 func (c Check) Run(ctx context.Context) Outcome {
 	v, err := c.Found(ctx)
-	return Outcome{Check: c, Value: v, Err: err, Passed: err == nil && math.Abs(v-c.Expected) <= c.Tolerance}
+	return Outcome{Check: c, Value: v, Err: err, Passed: err == nil && c.Agrees(v)}
 }
+
+// Agrees tells whether a value found is near enough to the one expected; NaN is
+// not.
+func (c Check) Agrees(found float64) bool { return math.Abs(found-c.Expected) <= c.Tolerance }
 
 // Checks lists all checks.
 func Checks() []Check {
 	var list []Check
-	for _, group := range [][]Check{rabi(), steady(), ramsey(), lambda(), adiabatic(), motion(), composite(), counting(), vectors()} {
+	for _, group := range [][]Check{
+		rabi(), damping(), steady(), shifts(), ramsey(), composite(), counting(),
+		lambda(), beats(), adiabatic(), motion(), cavity(), vectors(), vectorFiles(),
+	} {
 		list = append(list, group...)
 	}
 	return list
@@ -59,6 +63,7 @@ func Checks() []Check {
 
 const (
 	asked   = "the default accuracy, 1e-8 on any element of ρ"
+	direct  = "a direct solution, rounding only"
 	printed = "the digits printed"
 )
 

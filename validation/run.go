@@ -85,3 +85,21 @@ func pulse(t float64) string {
 }
 
 const endless = "[step.p]\non = [\"d\"]\n[sequence]\norder = \"p\"\n[record]\nwhen = \"steady\"\ncoherences = \"all\"\n"
+
+func sum(a, b func(context.Context) (float64, error)) func(context.Context) (float64, error) {
+	return func(ctx context.Context) (float64, error) {
+		x, err := a(ctx)
+		if err != nil {
+			return 0, err
+		}
+		y, err := b(ctx)
+		return x + y, err
+	}
+}
+
+func square(a func(context.Context) (float64, error)) func(context.Context) (float64, error) {
+	return func(ctx context.Context) (float64, error) {
+		x, err := a(ctx)
+		return x * x, err
+	}
+}
