@@ -133,3 +133,22 @@ func TestFrames(t *testing.T) {
 	assert.Equal(t, 1, triangle.Loops[0].Drive)
 	assert.Equal(t, []int{-1, 0, 1}, triangle.Loops[0].Shift)
 }
+
+// Detunings that close a loop in decimal numbers leave nothing to turn, though
+// 100.1 + 200.2 is not 300.3 in binary.
+func TestLoopAtRestInDecimals(t *testing.T) {
+	pair := func(a, b int) Drive { return Drive{Pairs: []Pair{{a, b}}} }
+	l, err := NewLayout(Model{Levels: 3, Drives: []Drive{pair(0, 1), pair(1, 2), pair(0, 2)}})
+	assert.NoError(t, err)
+	one := []dual.Number{{Real: 1}}
+	set := Settings{Drives: []DriveSettings{{On: true, Elements: one, Detuning: dual.Number{Real: 100.1}}, {On: true, Elements: one, Detuning: dual.Number{Real: 200.2}},
+		{On: true, Elements: one, Detuning: dual.Number{Real: 300.3, Emag: 1}}}}
+	st := l.NewStretch(1)
+	l.Fill(&st, &set, -1)
+	l.Fill(&st, &set, 0)
+	assert.Zero(t, st.Rotors[0])
+	assert.NotZero(t, st.Slopes[0].Rotors[0])
+	set.Drives[2].Detuning.Real += 1e-9
+	l.Fill(&st, &set, -1)
+	assert.NotZero(t, st.Rotors[0])
+}

@@ -289,10 +289,15 @@ func (l *Layout) fillRotors(dst *lindblad.Stretch, s *Settings, direction int) {
 	}
 	for i, loop := range l.Frames.Loops {
 		delta := s.Drives[loop.Drive].Detuning
+		size := math.Abs(delta.Real)
 		for k, m := range loop.Shift {
 			if m != 0 {
 				delta = dual.Sub(delta, dual.Scale(float64(m), s.Drives[k].Detuning))
+				size += math.Abs(float64(m) * s.Drives[k].Detuning.Real)
 			}
+		}
+		if math.Abs(delta.Real) <= 1e-15*size {
+			delta.Real = 0 // what rounding leaves of decimal numbers that cancel
 		}
 		if direction >= 0 {
 			dst.Slopes[direction].Rotors[i] = 2 * math.Pi * delta.Emag
