@@ -187,8 +187,8 @@ func (r *Result) ReducedChiSquare() float64 {
 
 // LeastSquares finds params that minimize the sum of the squares of size
 // residuals of the model, from start, by the Levenberg–Marquardt method in its
-// trust-region form (J. J. Moré, in Numerical Analysis, Lecture Notes in
-// Mathematics 630, 105 (1978)): the step p minimizes ‖r + Jp‖ within
+// trust-region form (J. J. Moré, in Numerical Analysis, LNM 630, Springer,
+// 105 (1978)): the step p minimizes ‖r + Jp‖ within
 // ‖Dp‖ ≤ Δ, with D the largest lengths of the columns of J met so far.
 //
 // Bounds act on the step itself (an active set: parameters that would pass
