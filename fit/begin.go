@@ -195,24 +195,23 @@ func (p *problem) places(i int) []float64 {
 func (p *problem) axis(i int) []float64 {
 	u := p.params[i]
 	low, high := u.low, u.high
-	span, step, kind := p.window(i)
+	w := p.window(i)
+	span, kind := w.high-w.low, w.unit
 	dimension := u.dial.Unit
 	inverse := map[string]string{"Hz": "s", "s": "Hz", "1/s": "s"}[dimension]
 	switch {
 	case dimension == "rad":
 		return even(math.Max(low, u.start-math.Pi), math.Min(high, u.start+math.Pi), 25)
-	case dimension == "Hz" && kind == "s" && u.dial.Off == nil:
-		// A frequency seen in time: a fifth of a cycle over the window apart,
-		// up to what the sampling can tell.
-		most := 0.5 / step
-		low, high = math.Max(low, u.start-most), math.Min(high, u.start+most)
-		if u.dial.Low == 0 {
-			low, high = math.Max(u.low, 0.1/span), math.Min(u.high, math.Max(most, 2*u.start))
-		}
+	case p.oscillates(i, kind):
+		// A frequency seen in time: a fifth of a cycle over the window apart.
+		low, high = u.frequencies(span, 0.5/w.step)
 		return even(low, high, int(math.Min(mostScan, math.Max(41, (high-low)*span*5))))
 	case kind == dimension && u.dial.Low < 0:
-		// A place on the axis that is scanned, a line's centre.
-		return even(math.Max(low, u.start-span), math.Min(high, u.start+span), 121)
+		// A place on the axis that is scanned, a line's centre, near the
+		// file's value or on that axis.
+		n := int(math.Max(60, math.Min(mostScan/10, span/w.step)))
+		places := even(math.Max(low, u.start-span), math.Min(high, u.start+span), 2*n+1)
+		return merged(places, even(math.Max(low, w.low), math.Min(high, w.high), n+1))
 	case u.dial.Low >= 0 && (inverse == kind || kind == dimension || dimension == "s" || dimension == "Hz" || dimension == "1/s"):
 		size := span
 		if kind != dimension && kind != "" {
@@ -230,14 +229,53 @@ func (p *problem) axis(i int) []float64 {
 	return even(math.Max(low, u.start-2*reach), math.Min(high, u.start+2*reach), 25)
 }
 
-// window is the extent and the usual step of what the traces of an unknown
-// scan, and the unit of it.
-func (p *problem) window(i int) (span, step float64, unit string) {
+// oscillates tells that an unknown is a frequency of what is scanned in time.
+func (p *problem) oscillates(i int, kind string) bool {
+	d := &p.params[i].dial
+	return d.Unit == "Hz" && kind == "s" && d.Off == nil
+}
+
+// frequencies is where a frequency seen in time is looked for: within the
+// bounds that the user gave, else as far as the sampling can tell (most), and
+// about the file's value where that lies beyond.
+func (u *parameter) frequencies(span, most float64) (low, high float64) {
+	low, high = -most, most
+	switch {
+	case u.start > most:
+		high = u.start + most
+	case u.start < -most:
+		low = u.start - most
+	}
+	givenLow, givenHigh := u.low > u.dial.Low, u.high < u.dial.High
+	switch {
+	case givenLow && givenHigh:
+		low, high = u.low, u.high
+	case givenLow:
+		low, high = u.low, math.Max(high, u.low+most)
+	case givenHigh:
+		low, high = math.Min(low, u.high-most), u.high
+	}
+	if u.dial.Low == 0 {
+		low = math.Max(low, 0.1/span)
+	}
+	return math.Max(low, u.low), math.Min(high, u.high)
+}
+
+// window is what the traces of an unknown scan: the extent of the widest, its
+// usual step, and the unit; 0 to 1 where nothing is scanned.
+type window struct {
+	low, high, step float64
+	unit            string
+}
+
+func (p *problem) window(i int) window {
+	best := window{0, 1, 1, ""}
+	span := 0.0
 	for t, m := range p.traces {
 		if p.params[i].trace >= 0 && p.params[i].trace != t {
 			continue
 		}
-		x, u := m.axis()
+		x, unit := m.axis()
 		sorted := append([]float64(nil), x...)
 		sort.Float64s(sorted)
 		var gaps []float64
@@ -250,14 +288,12 @@ func (p *problem) window(i int) (span, step float64, unit string) {
 			continue
 		}
 		sort.Float64s(gaps)
-		if w := sorted[len(sorted)-1] - sorted[0]; w > span {
-			span, step, unit = w, gaps[len(gaps)/2], u
+		first, last := sorted[0], sorted[len(sorted)-1]
+		if last-first > span {
+			span, best = last-first, window{first, last, gaps[len(gaps)/2], unit}
 		}
 	}
-	if span == 0 {
-		return 1, 1, ""
-	}
-	return span, step, unit
+	return best
 }
 
 // axis is what a trace scans, for figures and ranges: its first dial or time.
@@ -280,6 +316,13 @@ func even(a, b float64, n int) []float64 {
 		v[k] = a + (b-a)*float64(k)/float64(n-1)
 	}
 	return v
+}
+
+// merged joins two increasing lists into one.
+func merged(a, b []float64) []float64 {
+	out := append(append([]float64(nil), a...), b...)
+	sort.Float64s(out)
+	return out
 }
 
 func geometric(a, b float64, n int) []float64 {
