@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"slices"
+	"sort"
 
 	"rhotrace/experiment"
 	"rhotrace/io/table"
@@ -148,13 +149,29 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 	if best == nil {
 		return nil, nil, fmt.Errorf("%s: no search for the unknowns came to an end; check their start values and bounds: %w", p.e.File(), failed)
 	}
+	if p.aliased(best.Params) { // of answers that fit as well, the one below half the sampling rate
+		least := best.ChiSquare + 4*p.unit(best)
+		for _, r := range all {
+			if r.ChiSquare <= least && !p.aliased(r.Params) {
+				best, least = r, r.ChiSquare
+			}
+		}
+	}
+others:
 	for _, r := range all {
-		if r == best || !p.different(r.Params, best) || r.ChiSquare > best.ChiSquare+4*p.unit(best) {
+		if r.ChiSquare > best.ChiSquare+9*p.unit(best) {
 			continue
 		}
-		if len(others) == 0 || p.different(r.Params, others[0]) {
-			others = append(others, r)
+		for _, known := range append([]*Result{best}, others...) {
+			if !p.different(r.Params, known) {
+				continue others
+			}
 		}
+		others = append(others, r)
+	}
+	if len(others) > 2 {
+		sort.SliceStable(others, func(i, j int) bool { return others[i].ChiSquare < others[j].ChiSquare })
+		others = others[:2]
 	}
 	p.use(exact)
 	fine := p.bounded()
@@ -187,12 +204,27 @@ func (p *problem) bounded() *Settings {
 	return s
 }
 
-// unit is what one standard error adds to the sum of squares.
+// unit is what one standard error adds to the sum of squares; more than the
+// errors say where the residuals are larger.
 func (p *problem) unit(r *Result) float64 {
-	if r.ErrorsKnown || r.DegreesOfFreedom < 1 {
+	switch {
+	case r.DegreesOfFreedom < 1:
 		return 1
+	case r.ErrorsKnown:
+		return math.Max(1, r.ReducedChiSquare())
 	}
 	return r.ReducedChiSquare()
+}
+
+// aliased tells that a frequency lies above half the rate at which the traces
+// sample it.
+func (p *problem) aliased(params []float64) bool {
+	for i, v := range params {
+		if w := p.window(i); p.oscillates(i, w.unit) && math.Abs(v) > 0.5/w.step {
+			return true
+		}
+	}
+	return false
 }
 
 func (p *problem) errorsKnown() bool {

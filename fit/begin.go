@@ -13,8 +13,8 @@ import (
 
 // place is a start with the sum of squares that it leaves.
 type place struct {
-	params []float64
-	left   float64
+	params     []float64
+	left, cost float64
 }
 
 const (
@@ -67,7 +67,7 @@ func (p *problem) starts() ([]place, error) {
 			fringes = append(fringes, line...)
 		}
 	}
-	sort.SliceStable(fringes, func(i, j int) bool { return fringes[i].left < fringes[j].left })
+	p.sort(fringes)
 	p.use(rough)
 	candidates := append([]place{first}, fringes[:min(len(fringes), begins)]...)
 	for _, c := range candidates {
@@ -85,7 +85,7 @@ func (p *problem) starts() ([]place, error) {
 		found = append(found, best)
 	}
 	if len(oscillating) > 1 { // each frequency again, beside the others
-		sort.SliceStable(found, func(i, j int) bool { return found[i].left < found[j].left })
+		p.sort(found)
 		for _, i := range oscillating {
 			line, err := p.along(found[0].params, i, axes[i])
 			if err != nil {
@@ -94,8 +94,20 @@ func (p *problem) starts() ([]place, error) {
 			found = append(found, line...)
 		}
 	}
-	sort.SliceStable(found, func(i, j int) bool { return found[i].left < found[j].left })
+	p.sort(found)
 	return p.apart(found, axes), nil
+}
+
+// sort puts the best places first. An alias must be clearly better than a
+// frequency below half the sampling rate, or its many equals crowd that out.
+func (p *problem) sort(list []place) {
+	for i := range list {
+		list[i].cost = list[i].left
+		if p.aliased(list[i].params) {
+			list[i].cost *= 1.05
+		}
+	}
+	sort.SliceStable(list, func(i, j int) bool { return list[i].cost < list[j].cost })
 }
 
 // settings are starts that differ in the slow unknowns: the file's values, and
@@ -236,16 +248,9 @@ func (p *problem) oscillates(i int, kind string) bool {
 }
 
 // frequencies is where a frequency seen in time is looked for: within the
-// bounds that the user gave, else as far as the sampling can tell (most), and
-// about the file's value where that lies beyond.
+// bounds that the user gave, else as far as the sampling can tell (most).
 func (u *parameter) frequencies(span, most float64) (low, high float64) {
 	low, high = -most, most
-	switch {
-	case u.start > most:
-		high = u.start + most
-	case u.start < -most:
-		low = u.start - most
-	}
 	givenLow, givenHigh := u.low > u.dial.Low, u.high < u.dial.High
 	switch {
 	case givenLow && givenHigh:
@@ -352,7 +357,7 @@ func (p *problem) settleFactors(params []float64) (place, error) {
 				return place{}, p.ctx.Err()
 			}
 			if !p.inside(out) || len(params) == 0 {
-				return place{out, math.Inf(1)}, nil
+				return place{params: out, left: math.Inf(1)}, nil
 			}
 			return place{}, err
 		}
@@ -363,7 +368,7 @@ func (p *problem) settleFactors(params []float64) (place, error) {
 			left += r * r
 		}
 	}
-	return place{out, left}, nil
+	return place{params: out, left: left}, nil
 }
 
 // solveFactors is weighted linear regression of the trace on its prediction,

@@ -42,7 +42,11 @@ func (p *problem) doubts(a *Answer, r *Result, others []*Result) {
 		}
 	}
 	for _, o := range others {
-		warn("another answer fits as well: %s (sum of squares %.4g against %.4g)", p.describe(a, o.Params), o.ChiSquare, r.ChiSquare)
+		almost := ""
+		if o.ChiSquare > r.ChiSquare+4*p.unit(r) {
+			almost = "almost "
+		}
+		warn("another answer fits %sas well: %s (sum of squares %.4g against %.4g)", almost, p.describe(a, o.Params), o.ChiSquare, r.ChiSquare)
 	}
 	if r.ErrorsKnown && r.DegreesOfFreedom >= 1 {
 		switch q := ChiSquareProbability(r.ChiSquare, r.DegreesOfFreedom); {
