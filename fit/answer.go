@@ -305,6 +305,16 @@ func (p *problem) answer(r *Result, others []*Result) (*Answer, error) {
 		x.Low, x.High = math.Min(a1, b1), math.Max(a1, b1)
 		if math.IsNaN(se[i]) {
 			x.Low, x.High = v, v
+			if limit, open := p.limit(r, i, 1); open {
+				x.Low, x.High = math.Min(v, limit), math.Max(v, limit)
+			}
+		}
+		if u.cut && q-se[i] < u.low || u.cut && x.Low < x.High && q == u.low { // as far as one likes
+			if u.scale == rateScale {
+				x.High = math.Inf(1)
+			} else {
+				x.Low = 0
+			}
 		}
 		a.Unknowns = append(a.Unknowns, x)
 		row := append([]float64(nil), c[i*n:(i+1)*n]...)

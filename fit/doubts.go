@@ -3,6 +3,8 @@ package fit
 import (
 	"fmt"
 	"math"
+	"slices"
+	"strconv"
 	"strings"
 
 	"rhotrace/io/quantity"
@@ -19,7 +21,7 @@ func (p *problem) doubts(a *Answer, r *Result, others []*Result) {
 	}
 	for _, i := range r.AtBound {
 		u := &a.Unknowns[i]
-		if limit, open := p.limit(r, i); open {
+		if limit, open := p.limit(r, i, 1.645); open {
 			word := "longer than"
 			if p.params[i].scale == squareScale {
 				word = "less than"
@@ -72,6 +74,8 @@ func (p *problem) openUnknown(a *Answer, i int, warn func(string, ...any)) {
 		// What is measured is the rate, the inverse: a one-sided limit, 95 %.
 		rate := 1/u.Value + 1.645*u.Error/(u.Value*u.Value)
 		warn("%s is not constrained upwards by these data: longer than about %s (95 %%)", u.Name, u.Format(roundTo(1/rate, 2)))
+	case u.dial.Off != nil && math.IsInf(*u.dial.Off, 1) && u.Error > 0.1*u.Value && p.beyond(i, u.Value):
+		warn("%s is hardly constrained by these data: it is several times as long as what they scan, and any other slow change of the signal looks the same", u.Name)
 	case u.dial.Off != nil && *u.dial.Off == 0 && u.Error > 0.6*math.Abs(u.Value):
 		warn("%s is not told from zero by these data: less than about %s (95 %%)", u.Name, u.Format(roundTo(u.Value+1.645*u.Error, 2)))
 	case u.dial.Unit != "1" && u.dial.Unit != "rad" && u.dial.Low >= 0 && u.Error > math.Abs(u.Value):
@@ -79,22 +83,26 @@ func (p *problem) openUnknown(a *Answer, i int, warn func(string, ...any)) {
 	}
 }
 
+// beyond tells that a time is several times as long as what the traces scan.
+func (p *problem) beyond(i int, v float64) bool {
+	w := p.window(i)
+	return w.unit == "s" && v > 3*math.Max(w.high, w.high-w.low)
+}
+
 // limit is the one-sided limit of an unknown that stands where nothing could be
-// seen of it: 1.645 conditional standard errors from there.
-func (p *problem) limit(r *Result, i int) (limit float64, open bool) {
+// seen of it, z standard errors from there, all other unknowns free. open: the
+// place is within one standard error of nothing at all.
+func (p *problem) limit(r *Result, i int, z float64) (limit float64, open bool) {
 	u := &p.params[i]
-	if u.scale == plainScale || math.Abs(r.Params[i]-u.low) > 1e-9*math.Abs(u.low) {
+	q := r.Params[i]
+	if u.scale == plainScale || math.Abs(q-u.low) > 1e-9*math.Abs(u.low) {
 		return 0, false
 	}
-	sum := 0.0
-	for row := range r.Residuals {
-		j := r.Jacobian[row*len(p.params)+i]
-		sum += j * j
-	}
-	if !(sum > 0) {
+	se := math.Sqrt(p.unit(r)) / r.lengthBeside(i)
+	if !(q < se) || math.IsInf(se, 0) {
 		return 0, false
 	}
-	return u.scale.value(r.Params[i] + 1.645*math.Sqrt(p.unit(r)/sum)), true
+	return u.scale.value(q + z*se), true
 }
 
 func (p *problem) describe(a *Answer, params []float64) string {
@@ -127,7 +135,9 @@ func noise(f *Fitted, several bool, unit string, warn func(string, ...any)) {
 	if len(normal) < 12 {
 		return
 	}
-	if peaks := Peaks(f.X, normal, nil, 1); len(peaks) > 0 && peaks[0].FalseAlarm < 1e-4 {
+	span := slices.Max(f.X) - slices.Min(f.X)
+	// Less than one and a half cycles are a drift, which the runs show.
+	if peaks := Peaks(f.X, normal, nil, 1); len(peaks) > 0 && peaks[0].FalseAlarm < 1e-4 && peaks[0].Frequency*span > 1.5 {
 		left := fmt.Sprintf("a period of %.3g", 1/peaks[0].Frequency)
 		switch unit {
 		case "s", "":
@@ -140,12 +150,6 @@ func noise(f *Fitted, several bool, unit string, warn func(string, ...any)) {
 }
 
 func roundTo(v float64, digits int) float64 {
-	if v == 0 || math.IsInf(v, 0) || math.IsNaN(v) {
-		return v
-	}
-	f := math.Pow(10, float64(digits-1)-math.Floor(math.Log10(math.Abs(v))))
-	if f > 1e15 || f < 1e-15 {
-		return v
-	}
-	return math.Round(v*f) / f
+	out, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', digits-1, 64), 64)
+	return out
 }

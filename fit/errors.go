@@ -1,6 +1,10 @@
 package fit
 
-import "math"
+import (
+	"math"
+
+	"gonum.org/v1/gonum/floats"
+)
 
 // judge fills what the curvature at the answer says about its errors.
 func (r *Result) judge(set Settings) {
@@ -68,4 +72,41 @@ func (r *Result) Correlation() []float64 {
 		}
 	}
 	return list
+}
+
+// lengthBeside is the length of column i of the Jacobian at right angles to the
+// columns of all free parameters: the inverse of the standard error that the
+// parameter would have if it were free too.
+func (r *Result) lengthBeside(i int) float64 {
+	n, m := len(r.Params), len(r.Residuals)
+	column := func(j int) []float64 {
+		c := make([]float64, m)
+		for k := range c {
+			c[k] = r.Jacobian[k*n+j]
+		}
+		return c
+	}
+	var basis [][]float64
+	project := func(c []float64) { // twice is enough against rounding
+		for range 2 {
+			for _, b := range basis {
+				floats.AddScaled(c, -floats.Dot(b, c), b)
+			}
+		}
+	}
+	for j, fixed := range r.fixed() {
+		if fixed || j == i {
+			continue
+		}
+		c := column(j)
+		whole := floats.Norm(c, 2)
+		project(c)
+		if rest := floats.Norm(c, 2); rest > 1e-10*whole {
+			floats.Scale(1/rest, c)
+			basis = append(basis, c)
+		}
+	}
+	c := column(i)
+	project(c)
+	return floats.Norm(c, 2)
 }

@@ -75,6 +75,10 @@ func (p *problem) rescale() {
 			u.scale = plainScale
 			continue
 		}
+		u.cut = low > u.low
+		if u.scale == rateScale {
+			u.cut = high < u.high
+		}
 		start := math.Max(low, math.Min(high, u.start))
 		u.low, u.high, u.start = u.scale.place(low), u.scale.place(high), u.scale.place(start)
 		if u.scale == rateScale {

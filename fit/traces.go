@@ -19,6 +19,7 @@ type parameter struct {
 	start     float64
 	low, high float64
 	scale     searchScale
+	cut       bool // the search ends at low, the unknown does not
 }
 
 // measured is one trace with what predicts it.

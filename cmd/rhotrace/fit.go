@@ -161,26 +161,43 @@ func printFit(w io.Writer, a *fit.Answer) error {
 	}
 	fmt.Fprint(w, "\n")
 	for k, f := range a.Traces {
-		fmt.Fprintf(w, "%s: %d points, %s\n", f.Name, len(f.Data), a.Weighting[k])
-	}
-	if a.DegreesOfFreedom > 0 {
-		if a.ErrorsKnown {
-			fmt.Fprintf(w, "reduced chi-square %.3f at %d degrees of freedom\n", a.ReducedChiSquare, a.DegreesOfFreedom)
-		} else {
-			fmt.Fprintf(w, "rms of the residuals %.3g at %d degrees of freedom\n", math.Sqrt(a.ReducedChiSquare), a.DegreesOfFreedom)
+		square := 0.0
+		for _, r := range f.Residual {
+			square += r * r
 		}
+		fmt.Fprintf(w, "%s: %d points, %s, rms of the residuals %.3g\n", f.Name, len(f.Data), a.Weighting[k], math.Sqrt(square/float64(len(f.Residual))))
+	}
+	switch {
+	case a.DegreesOfFreedom < 1:
+	case a.ErrorsKnown:
+		fmt.Fprintf(w, "reduced chi-square %.3f at %d degrees of freedom\n", a.ReducedChiSquare, a.DegreesOfFreedom)
+	default:
+		fmt.Fprintf(w, "%d degrees of freedom\n", a.DegreesOfFreedom)
 	}
 	return nil
 }
 
-// valueAndError writes an unknown as 12.34(5) kHz.
+// valueAndError writes an unknown as 12.34(5) kHz, or a limit as > 3 ms (68 %).
 func valueAndError(u *fit.Unknown) string {
+	if math.IsNaN(u.Error) { // at a bound; a limit where the data allow one
+		if math.IsInf(u.High, 1) {
+			return "> " + u.Format(twoDigits(u.Low)) + " (68 %)"
+		}
+		if u.High > u.Low && u.Low == 0 {
+			return "< " + u.Format(twoDigits(u.High)) + " (68 %)"
+		}
+	}
 	text, unit, _ := strings.Cut(u.Format(u.Value), " ")
 	if v, err := strconv.ParseFloat(text, 64); err == nil && v != 0 && unit != "" && !math.IsInf(v, 0) {
 		factor := u.Value / v
 		return fit.Notation(v, u.Error/factor) + " " + unit
 	}
 	return strings.TrimSpace(fit.Notation(u.Value, u.Error) + " " + unit)
+}
+
+func twoDigits(v float64) float64 {
+	out, _ := strconv.ParseFloat(strconv.FormatFloat(v, 'e', 1, 64), 64)
+	return out
 }
 
 // fitJSON writes the answer as one object in SI units.
