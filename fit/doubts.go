@@ -90,8 +90,9 @@ func (p *problem) beyond(i int, v float64) bool {
 }
 
 // limit is the one-sided limit of an unknown that stands where nothing could be
-// seen of it, z standard errors from there, all other unknowns free. open: the
-// place is within one standard error of nothing at all.
+// seen of it: where the sum of squares, the other unknowns following, has grown
+// by z² times what one standard error adds. It grows by slope·q + (q/se)² there.
+// open: the place is within one standard error of nothing at all.
 func (p *problem) limit(r *Result, i int, z float64) (limit float64, open bool) {
 	u := &p.params[i]
 	q := r.Params[i]
@@ -102,7 +103,12 @@ func (p *problem) limit(r *Result, i int, z float64) (limit float64, open bool) 
 	if !(q < se) || math.IsInf(se, 0) {
 		return 0, false
 	}
-	return u.scale.value(q + z*se), true
+	slope := 0.0
+	for row, v := range r.Residuals {
+		slope += 2 * v * r.Jacobian[row*len(p.params)+i]
+	}
+	half := 0.5 * math.Max(slope, 0) * se / p.unit(r)
+	return u.scale.value(q + se*(math.Sqrt(half*half+z*z)-half)), true
 }
 
 func (p *problem) describe(a *Answer, params []float64) string {
