@@ -182,13 +182,14 @@ others:
 				return nil, nil, err
 			}
 			m.modelErrors(best.Params)
+			p.residualErrors(m, best.Params)
 		}
 		next, err := LeastSquares(p.model, p.rows, best.Params, fine)
 		if err != nil {
 			return nil, nil, err
 		}
 		best = next
-		if pass == 0 && !p.counts() {
+		if pass == 0 && !p.counts() && len(p.traces) == 1 {
 			break
 		}
 	}
@@ -265,6 +266,37 @@ func (p *problem) balance() error {
 		}
 	}
 	return nil
+}
+
+// residualErrors takes the scatter of one of several traces without errors from
+// its own residuals, so that each trace weighs by its own.
+func (p *problem) residualErrors(m *measured, params []float64) {
+	if m.known || len(p.traces) == 1 {
+		return
+	}
+	square, n := 0.0, float64(len(m.y))
+	scale, offset := m.scale.at(params), m.offset.at(params)
+	for i, y := range m.y {
+		r := offset + scale*m.pred[i] - y
+		square += r * r
+	}
+	left := n // degrees of freedom; a shared unknown takes from each trace its share
+	for i, u := range p.params {
+		switch {
+		case u.trace < 0 && !p.isFactor(i):
+			left -= n / float64(p.rows)
+		case u.trace >= 0 && p.traces[u.trace] == m, m.scale.param == i, m.offset.param == i:
+			left--
+		}
+	}
+	// Never far below what neighbours differ by: a few points can be hit exactly.
+	x, _ := m.axis()
+	least := 0.1 * Scatter(x, m.y)
+	if s := math.Max(least, math.Sqrt(square/math.Max(left, 1))); s > 0 && left > 0 {
+		for i := range m.sigma {
+			m.sigma[i] = s
+		}
+	}
 }
 
 func spreadOf(y []float64) float64 {
@@ -361,8 +393,12 @@ func (p *problem) answer(r *Result, others []*Result) (*Answer, error) {
 // left out where the file has one dial for all.
 func (p *problem) fitted(a *Answer, r *Result) (err error) {
 	var turns []experiment.Turn
+	values := map[string]int{}
+	for _, u := range p.params {
+		values[u.dial.Path]++
+	}
 	for i, u := range p.params {
-		if u.trace < 0 || len(p.traces) == 1 || p.isFactor(i) {
+		if values[u.dial.Path] == 1 {
 			turns = append(turns, experiment.Turn{Path: u.dial.Path, Value: u.scale.value(r.Params[i])})
 		}
 	}

@@ -72,7 +72,7 @@ func (s *session) runFit(c *cli.Context) error {
 			}
 		}
 	}
-	if err := keepInputs(e, c, saved, drawn); err != nil {
+	if err := keepInputs(e, c, saved, drawn, kept); err != nil {
 		return err
 	}
 	outputs, err := s.open(saved, drawn)

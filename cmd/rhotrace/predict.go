@@ -146,8 +146,12 @@ func keepInputs(e *experiment.Experiment, c *cli.Context, outputs ...string) err
 			}
 		}
 	}
-	if len(outputs) == 2 && outputs[0] != "" && outfile.Same(outputs[0], outputs[1]) {
-		return mistaken("%s and %s are one file; name two", outputs[0], outputs[1])
+	for i, out := range outputs {
+		for _, other := range outputs[:i] {
+			if out != "" && other != "" && outfile.Same(other, out) {
+				return mistaken("%s and %s are one file; name two", other, out)
+			}
+		}
 	}
 	return nil
 }
