@@ -268,3 +268,91 @@ func TestExampleTrace(t *testing.T) {
 	}
 	assert.Empty(t, a.Warnings)
 }
+
+// noisy is the trace of an experiment with Gaussian scatter of unknown size.
+func noisy(t testing.TB, e *experiment.Experiment, seed uint64, sigma, scale, offset float64) *experiment.Trace {
+	t.Helper()
+	tr := draw(t, e, seed, 1, 1, 0)
+	out, err := experiment.Run(context.Background(), e)
+	require.NoError(t, err)
+	r := rand.New(rand.NewPCG(seed, 2))
+	for i, v := range out.Column("signal").Values {
+		tr.Y[i] = offset + scale*v + sigma*r.NormFloat64()
+	}
+	tr.Is, tr.Shots = "value", nil
+	return tr
+}
+
+// Even sampling cannot tell a frequency from its aliases: with a first guess far
+// beyond half the sampling rate a fit answers with the one below, and says so.
+func TestAliasesAreNotPreferred(t *testing.T) {
+	text := fill(atom, "DETUNING", "0 Hz", "LIFETIME", "1 s", "TIME", "0.6 ms", "order = \"half wait half\"", "order = \"pulse\"",
+		"[step.wait]", "[step.pulse]\non = [\"d\"]\nlasts = \"1 us\"\n[step.wait]", "step.wait.lasts", "step.pulse.lasts", "to = \"10 ms\"", "to = \"1 ms\"", "rabi = \"10 kHz\"", "rabi = \"RRR\"")
+	tr := noisy(t, read(t, fill(text, "RRR", "13.7 kHz")), 9, 0.02, 1, 0)
+	for _, guess := range []string{"1.37 kHz", "137 kHz", "93.7 kHz", "66.3 kHz"} { // 80 kHz is the sampling rate
+		a, err := fit.Traces(context.Background(), read(t, fill(text, "RRR", guess)+"[unknown.rabi]\ndial = \"drive.d.rabi\"\n"), []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		assert.InDelta(t, 13.7e3, a.Unknowns[0].Value, 4*a.Unknowns[0].Error, guess)
+	}
+	bounds := "low = \"1 kHz\"\nhigh = \"100 kHz\"\n"
+	a, err := fit.Traces(context.Background(), read(t, fill(text, "RRR", "90 kHz")+"[unknown.rabi]\ndial = \"drive.d.rabi\"\n"+bounds), []*experiment.Trace{tr}, fit.TraceSettings{})
+	require.NoError(t, err)
+	assert.InDelta(t, 13.7e3, a.Unknowns[0].Value, 4*a.Unknowns[0].Error)
+	assert.Contains(t, strings.Join(a.Warnings, "\n"), "another answer fits", "aliases within the bounds")
+}
+
+// A lifetime that data without any decay leave open gets a limit: there the sum
+// of squares, with all other unknowns fitted anew, is larger by one.
+func TestLimitIsThatOfTheProfile(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1000 s", "TIME", "TTT", "DETUNING", "417 Hz")
+	block := "[trace.drawn]\nfile = \"no.csv\"\nx = \"w\"\nx-unit = \"s\"\ny = \"y\"\n[unknown.scale]\ndial = \"trace.drawn.scale\"\n[unknown.offset]\ndial = \"trace.drawn.offset\"\n"
+	limits := 0
+	for seed := range uint64(6) {
+		tr := noisy(t, read(t, fill(text, "TTT", "100 s")), seed, 0.05, 2, 1)
+		tr.Scale, tr.Offset = "trace.drawn.scale", "trace.drawn.offset"
+		tr.Error = make([]float64, len(tr.Y))
+		for i := range tr.Error {
+			tr.Error[i] = 0.05
+		}
+		a, err := fit.Traces(context.Background(), read(t, fill(text, "TTT", "3 ms")+block+"[unknown.time]\ndial = \"dephasing.y.time\"\n"), []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		u := a.Unknowns[2]
+		assert.Contains(t, strings.Join(a.Warnings, "\n"), "longer than", "the window is 10 ms")
+		if !math.IsNaN(u.Error) {
+			continue
+		}
+		limits++
+		assert.True(t, math.IsInf(u.High, 1))
+		held, err := fit.Traces(context.Background(), read(t, fill(text, "TTT", fmt.Sprint(u.Low, " s"))+block), []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		chi := func(a *fit.Answer) float64 { return a.ReducedChiSquare * float64(a.DegreesOfFreedom) }
+		assert.InDelta(t, 1, chi(held)-chi(a), 0.2) // the sum is a parabola only nearly
+	}
+	assert.Positive(t, limits)
+}
+
+// Of two traces without errors each weighs by its own scatter: with nothing in
+// common, fitted at once, they have the errors that they have alone.
+func TestEachTraceHasItsOwnScatter(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "6 ms", "DETUNING", "417 Hz")
+	asked := read(t, text+"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"0 Hz\"\nper = \"trace\"\n[unknown.time]\ndial = \"dephasing.y.time\"\nper = \"trace\"\n")
+	one, two := noisy(t, asked, 1, 0.01, 1, 0), noisy(t, asked, 2, 0.2, 1, 0)
+	one.Name, two.Name = "one", "two"
+	both, err := fit.Traces(context.Background(), asked, []*experiment.Trace{one, two}, fit.TraceSettings{})
+	require.NoError(t, err)
+	for k, tr := range []*experiment.Trace{one, two} {
+		alone, err := fit.Traces(context.Background(), asked, []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		for i, u := range alone.Unknowns {
+			joint := both.Unknowns[2*i+k]
+			assert.Equal(t, u.Name+"["+tr.Name+"]", joint.Name)
+			assert.InEpsilon(t, u.Value, joint.Value, 1e-4)
+			assert.InEpsilon(t, u.Error, joint.Error, 1e-2, joint.Name)
+		}
+	}
+	for path, want := range map[string]float64{"drive.d.detuning": 417, "dephasing.y.time": 6e-3} {
+		v, err := both.Fitted.Value(path)
+		require.NoError(t, err)
+		assert.Equal(t, want, v, "two values for one dial of the file: it stays")
+	}
+}
