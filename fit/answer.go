@@ -149,8 +149,8 @@ func (p *problem) solve() (best *Result, others []*Result, err error) {
 	if best == nil {
 		return nil, nil, fmt.Errorf("%s: no search for the unknowns came to an end; check their start values and bounds: %w", p.e.File(), failed)
 	}
-	if p.aliased(best.Params) { // of answers that fit as well, the one below half the sampling rate
-		least := best.ChiSquare + 4*p.unit(best)
+	if p.aliased(best.Params) { // unless it is clearly better, one below half the sampling rate
+		least := best.ChiSquare + 9*p.unit(best)
 		for _, r := range all {
 			if r.ChiSquare <= least && !p.aliased(r.Params) {
 				best, least = r, r.ChiSquare
