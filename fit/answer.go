@@ -36,9 +36,9 @@ type Answer struct {
 // Unknown is one number found. All values are in SI units.
 type Unknown struct {
 	Name, Dial, Unit string
-	Value            float64
+	Value            float64 // where the data leave a lifetime open: the far end of the search, a warning says so
 	Error            float64 // standard error; NaN at a bound, +Inf where the data leave it open
-	Low, High        float64 // 68 % interval: the value and its error, cut at the bounds
+	Low, High        float64 // 68 % interval: the value and its error, cut at the bounds; High +Inf where it is open
 	dial             experiment.Dial
 }
 
@@ -100,7 +100,9 @@ func (f *Fitted) Curve(ctx context.Context, n int) (x, y []float64, err error) {
 // offset + scale × prediction. Weights: the errors of the file, else binomial or
 // Poisson errors from the shots, taken from the model and iterated; else equal
 // ones whose size the residuals give. Searches begin where scans of each
-// unknown leave least, so that a fringe of unknown frequency is found.
+// unknown leave least, so that a fringe of unknown frequency is found: within
+// low and high of the unknown, else up to half the rate at which the traces
+// sample it.
 func Traces(ctx context.Context, e *experiment.Experiment, traces []*experiment.Trace, set TraceSettings) (*Answer, error) {
 	p, err := newProblem(ctx, e, traces, set.Workers)
 	if err != nil {

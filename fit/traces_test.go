@@ -356,3 +356,29 @@ func TestEachTraceHasItsOwnScatter(t *testing.T) {
 		assert.Equal(t, want, v, "two values for one dial of the file: it stays")
 	}
 }
+
+// A trace in recorded time, its rows in any order, finds the Rabi frequency and
+// the lifetime of a driven atom from far away.
+func TestRecordedTime(t *testing.T) {
+	text := fill(atom, "DETUNING", "0 Hz", "LIFETIME", "LLL", "TIME", "1 s", "order = \"half wait half\"", "order = \"pulse\"", "rabi = \"10 kHz\"", "rabi = \"RRR\"",
+		"[step.wait]", "[step.pulse]\non = [\"d\"]\nlasts = \"2 ms\"\n[step.wait]", "[readout]", "[record]\nsamples = 81\n[readout]")
+	cut := strings.Index(text, "[scan.w]")
+	text = text[:cut] + text[strings.Index(text, "[record]"):]
+	out, err := experiment.Run(context.Background(), read(t, fill(text, "RRR", "3.1 kHz", "LLL", "0.7 ms")))
+	require.NoError(t, err)
+	r := rand.New(rand.NewPCG(11, 1))
+	tr := &experiment.Trace{Name: "t", File: "t.csv", Is: "value", Shows: "signal"}
+	for _, i := range r.Perm(out.Rows()) {
+		tr.Times = append(tr.Times, out.Column("time").Values[i])
+		tr.Y = append(tr.Y, out.Column("signal").Values[i]+0.02*r.NormFloat64())
+	}
+	a, err := fit.Traces(context.Background(), read(t, fill(text, "RRR", "400 Hz", "LLL", "1 s")+"[unknown.rabi]\ndial = \"drive.d.rabi\"\n[unknown.lifetime]\ndial = \"decay.x.lifetime\"\n"), []*experiment.Trace{tr}, fit.TraceSettings{})
+	require.NoError(t, err)
+	for i, want := range []float64{3.1e3, 0.7e-3} {
+		u := a.Unknowns[i]
+		assert.InDelta(t, want, u.Value, 4*u.Error, u.Name)
+		assert.Less(t, u.Error, 0.1*want)
+	}
+	assert.Empty(t, a.Warnings)
+	assert.NotNil(t, a.Table().Column("time"))
+}

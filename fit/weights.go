@@ -14,7 +14,7 @@ func (m *measured) firstErrors() error {
 		m.known, m.weighting = true, "errors from the file"
 		for i, s := range tr.Error {
 			if !(s > 0) {
-				return fmt.Errorf("%s: row %d has the standard error %g; every error must be above zero (or leave y-error out)", tr.File, i+1, s)
+				return fmt.Errorf("%s: the standard error is %g; every error must be above zero (or leave y-error out)", m.place(i), s)
 			}
 			m.sigma[i] = s
 		}
@@ -24,7 +24,7 @@ func (m *measured) firstErrors() error {
 		m.divideCounts()
 		for i, y := range m.y {
 			if y < -1e-9 || y > 1+1e-9 {
-				return fmt.Errorf("%s: row %d is %g, which is no share of shots; for a signal in other units write y-is = \"value\"", tr.File, i+1, y)
+				return fmt.Errorf("%s: the signal is %g, which is no share of shots; for a signal in other units write y-is = \"value\"", m.place(i), y)
 			}
 			m.sigma[i] = CountError(math.Max(0, math.Min(1, y))*tr.Shots[i], tr.Shots[i])
 		}
@@ -41,6 +41,14 @@ func (m *measured) firstErrors() error {
 		}
 	}
 	return nil
+}
+
+// place is the file and line of a row.
+func (m *measured) place(i int) string {
+	if i < len(m.trace.Lines) {
+		return fmt.Sprintf("%s:%d", m.trace.File, m.trace.Lines[i])
+	}
+	return fmt.Sprintf("%s: row %d", m.trace.File, i+1)
 }
 
 // counting reports whether the trace is a share of shots called bright.
