@@ -74,6 +74,9 @@ func Read(name string, text []byte) (*Experiment, error) {
 // ReadFile reads the experiment file at path.
 func ReadFile(path string) (*Experiment, error) {
 	text, err := os.ReadFile(path)
+	if info, stat := os.Stat(path); stat == nil && info.IsDir() {
+		return nil, fmt.Errorf("%s: is a directory; name a file in it", path)
+	}
 	if err != nil {
 		return nil, fmt.Errorf("%s: cannot be read: %w; check the name and the permissions", path, rootCause(err))
 	}

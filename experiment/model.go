@@ -69,6 +69,7 @@ func (r *reader) checkModel() {
 			}
 		}
 	}
+	r.warnIdleScans()
 	r.warnLoops(&layout.Frames)
 }
 
@@ -162,6 +163,22 @@ func (r *reader) checkLab() {
 		}
 		if lab && st.ideal {
 			r.fail(s.nodes[st.area], s.dials[st.area].Path, "a rotation in no time needs the frame of the drive, which frame = \"lab\" gives up; let it last")
+		}
+	}
+}
+
+// warnIdleScans tells that a scan turns a dial of a step that is never played.
+func (r *reader) warnIdleScans() {
+	s := r.e.shape
+	used := make([]bool, len(s.steps))
+	uses(s.sequence.order, used)
+	for _, sc := range s.scans {
+		for _, f := range sc.dials {
+			for i, st := range s.steps {
+				if path := s.dials[f].Path; !used[i] && strings.HasPrefix(path, joinKey("step", st.name)+".") {
+					r.warnings = append(r.warnings, fmt.Sprintf("scan.%s: turns %s, and no step that is played uses it", joinKey(sc.name), path))
+				}
+			}
 		}
 	}
 }

@@ -131,6 +131,9 @@ func (p *orderParser) times(word string, n *orderNode) (err error) {
 		}
 		return nil
 	}
+	if word[0] == '-' {
+		return fmt.Errorf("%q: the number of repeats cannot be negative", word)
+	}
 	n.number, err = p.number(word)
 	return err
 }
@@ -200,6 +203,9 @@ func total(nodes []orderNode, values []float64, lasts func(step int) float64) fl
 // uses reports which steps an order names.
 func uses(nodes []orderNode, used []bool) {
 	for i := range nodes {
+		if nodes[i].number == none && nodes[i].count == 0 {
+			continue
+		}
 		if nodes[i].group != nil {
 			uses(nodes[i].group, used)
 		} else {

@@ -162,7 +162,7 @@ func (r *reader) duration(k *keys, s *step) {
 	} else {
 		k.number("lasts", &s.lasts, timeSpan, "duration")
 	}
-	k.number("area", &s.area, angle.from(0), "pulse area 2π × Rabi frequency × duration of the first drive in on")
+	k.number("area", &s.area, angle.from(0), "pulse area 2π × Rabi frequency × duration of the first drive in on; alone it gives the duration, beside lasts the strength of that drive in this step")
 	if r.listing {
 		return
 	}

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"path/filepath"
+	"strings"
 
 	"rhotrace/io/quantity"
 	"rhotrace/io/tracefile"
@@ -132,7 +133,7 @@ func (r *reader) traceUnit(k *keys, c *traceColumn, unit *node, several bool) {
 		return
 	}
 	if _, err := quantity.Parse("1 "+n.text, dim); err != nil {
-		k.fail(n, "x-unit", "%v", err)
+		k.fail(n, "x-unit", "%v", strings.TrimPrefix(err.Error(), `"1 `+n.text+`": `))
 		return
 	}
 	c.unit = n.text
@@ -286,6 +287,7 @@ type Trace struct {
 	// Remarks say how the file was read.
 	Remarks []string
 	Text    []byte
+	Lines   []int // line of the file for each row, from 1
 }
 
 // Traces reads the measured traces of the file, then the given ones, each as
@@ -294,6 +296,15 @@ type Trace struct {
 func (e *Experiment) Traces(files ...string) ([]*Trace, error) {
 	var list []*Trace
 	var pattern *trace
+	seen := map[string]bool{}
+	once := func(path string) error {
+		if clean := filepath.Clean(path); seen[clean] {
+			return fmt.Errorf("%s: is given twice and would count as two measurements; give it once", path)
+		} else {
+			seen[clean] = true
+		}
+		return nil
+	}
 	for _, t := range e.shape.traces {
 		if t.file == "" {
 			if pattern != nil && len(files) > 0 {
@@ -305,6 +316,9 @@ func (e *Experiment) Traces(files ...string) ([]*Trace, error) {
 		path := t.file
 		if !filepath.IsAbs(path) {
 			path = filepath.Join(e.shape.dir, path)
+		}
+		if err := once(path); err != nil {
+			return nil, err
 		}
 		one, err := e.readTrace(t, t.name, path)
 		if err != nil {
@@ -319,6 +333,9 @@ func (e *Experiment) Traces(files ...string) ([]*Trace, error) {
 			if t, err = e.plainTrace(); err != nil {
 				return nil, err
 			}
+		}
+		if err := once(path); err != nil {
+			return nil, err
 		}
 		one, err := e.readTrace(t, name, path)
 		if err != nil {
@@ -374,7 +391,10 @@ func (e *Experiment) readTrace(t *trace, name, path string) (*Trace, error) {
 	for _, c := range wanted {
 		col, err := data.Column(c)
 		if err != nil {
-			return nil, fmt.Errorf("%s (%s.%s of %s)", err, "trace", t.name, e.shape.file)
+			if t.node == nil {
+				return nil, fmt.Errorf("%w; to say how a trace given on the command line is read, add [trace.NAME] without file to %s, with x, x-unit and y", err, e.shape.file)
+			}
+			return nil, fmt.Errorf("%w (trace.%s of %s)", err, t.name, e.shape.file)
 		}
 		columns[c] = col.Values
 	}
@@ -391,6 +411,9 @@ func (e *Experiment) readTrace(t *trace, name, path string) (*Trace, error) {
 			v[i] = columns[name][row]
 		}
 		return v
+	}
+	for _, row := range keep {
+		out.Lines = append(out.Lines, data.Lines[row])
 	}
 	out.Y = pick(t.y)
 	if t.yError != "" {

@@ -1,6 +1,7 @@
 package fit
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -121,29 +122,38 @@ func (p *problem) describe(a *Answer, params []float64) string {
 	return strings.Join(parts, ", ")
 }
 
-// noise tests whether residuals look like noise: runs of one sign, and a
-// frequency that is left over.
+// noise tests whether residuals look like noise: runs of one sign, neighbours
+// alike, and a frequency that is left over.
 func noise(f *Fitted, several bool, unit string, warn func(string, ...any)) {
 	name := "the residuals"
 	if several {
 		name = "the residuals of " + f.Name
 	}
-	normal := make([]float64, len(f.Residual))
-	for i := range normal {
-		normal[i] = f.Residual[i] / f.Error[i]
+	order := make([]int, len(f.X)) // along the axis, whatever the order of the rows
+	for i := range order {
+		order[i] = i
+	}
+	slices.SortStableFunc(order, func(a, b int) int { return cmp.Compare(f.X[a], f.X[b]) })
+	x, normal := make([]float64, len(order)), make([]float64, len(order))
+	for k, i := range order {
 		if f.Error[i] == 0 {
 			return // an exact fit
 		}
+		x[k], normal[k] = f.X[i], f.Residual[i]/f.Error[i]
 	}
-	if runs := RunsTest(normal); runs.TooFew < 1e-3 {
+	alike := Autocorrelation(normal)
+	n := float64(len(normal))
+	if runs := RunsTest(normal); runs.TooFew >= 1e-3 && n >= 12 && alike > 3.5/math.Sqrt(n)-1/n {
+		warn("%s are not noise: neighbours resemble one another (correlation %.2f)", name, alike)
+	} else if runs.TooFew < 1e-3 {
 		warn("%s are not noise: they keep their sign for long (%d runs where %.0f are expected, probability %.1g)", name, runs.Runs, runs.Expected, runs.TooFew)
 	}
 	if len(normal) < 12 {
 		return
 	}
-	span := slices.Max(f.X) - slices.Min(f.X)
+	span := x[len(x)-1] - x[0]
 	// Less than one and a half cycles are a drift, which the runs show.
-	if peaks := Peaks(f.X, normal, nil, 1); len(peaks) > 0 && peaks[0].FalseAlarm < 1e-4 && peaks[0].Frequency*span > 1.5 {
+	if peaks := Peaks(x, normal, nil, 1); len(peaks) > 0 && peaks[0].FalseAlarm < 1e-4 && peaks[0].Frequency*span > 1.5 {
 		left := fmt.Sprintf("a period of %.3g", 1/peaks[0].Frequency)
 		switch unit {
 		case "s", "":

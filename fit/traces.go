@@ -222,6 +222,12 @@ func byTime(tr *experiment.Trace) *experiment.Trace {
 	}
 	sorted := *tr
 	sorted.Times, sorted.Y, sorted.Error, sorted.Shots = pick(tr.Times), pick(tr.Y), pick(tr.Error), pick(tr.Shots)
+	if tr.Lines != nil {
+		sorted.Lines = make([]int, len(order))
+		for i, k := range order {
+			sorted.Lines[i] = tr.Lines[k]
+		}
+	}
 	return &sorted
 }
 

@@ -23,7 +23,7 @@ type problem struct {
 		Amplitude, Centre, Sigma, Frequency, Phase float64
 		Operator                                   [][4]float64
 	}
-	Collapse         [][][4]float64
+	Jumps            [][][4]float64
 	StartPopulations []float64 `json:"start_populations"`
 	First, Last      float64
 	Outputs          int
@@ -90,7 +90,7 @@ func (p *problem) setup() *setup {
 	}
 	add(Hamiltonian(operator(p.Hamiltonian)), 1)
 	var ops []Operator
-	for _, c := range p.Collapse {
+	for _, c := range p.Jumps {
 		ops = append(ops, operator(c))
 	}
 	if len(ops) > 0 {

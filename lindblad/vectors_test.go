@@ -21,7 +21,7 @@ type vector struct {
 		Kind                                   string
 		Amplitude, Center, Sigma, Omega, Phase float64
 	}
-	Collapse []struct {
+	Jumps []struct {
 		Rate float64
 		L    [][]any
 	}
@@ -65,7 +65,7 @@ func TestHighPrecisionVectors(t *testing.T) {
 			n := len(p.H0)
 			pieces := []Piece{Hamiltonian(operatorOf(p.H0, 1))}
 			coef := []float64{1}
-			for _, c := range p.Collapse {
+			for _, c := range p.Jumps {
 				pieces = append(pieces, Jump(operatorOf(c.L, math.Sqrt(c.Rate))))
 				coef = append(coef, 1)
 			}

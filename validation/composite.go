@@ -18,7 +18,7 @@ const (
 // (Ω/2)(e^{iφ}|e⟩⟨g| + h.c.); here φ has the other sign, and the mirror image has the
 // same infidelity at Δ = −0.1Ω (2 % of it for BB1 hang on that sign).
 func composite() (list []Check) {
-	const plain = "closed form, textbook"
+	const plain = "closed form"
 	const bb1, sk1, corpse = "Wimperis, JMR A 109, 221 (1994)", "Brown et al., PRA 70, 052318 (2004)", "Cummins et al., PRA 67, 042308 (2003)"
 	pi := [][2]float64{{180, 0}}
 	bb := [][2]float64{{180, phasePi}, {360, 3 * phasePi}, {180, phasePi}, {180, 0}}

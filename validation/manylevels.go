@@ -59,14 +59,14 @@ func lambda() (list []Check) {
 		Check{"dark state, second level", "Arimondo, Prog. Opt. 35, 257 (1996)", Recomputed, 0.36, 1e-9, direct, last(threeLevels(0.3, 0.4, 0, 0, 0.5, 0.5, 0, both), "population.b")},
 		Check{"dark state, coherence", "Arimondo, Prog. Opt. 35, 257 (1996)", Recomputed, -0.48, 1e-9, direct, last(threeLevels(0.3, 0.4, 0, 0, 0.5, 0.5, 0, both), "coherence.a:b.re")})
 	for _, c := range [][3]float64{{0.02, 0, 1.59948784e-4}, {0.05, 1, 1.99792208e-4}} {
-		list = append(list, Check{fmt.Sprintf("pumping rate, Ω=%gΓ Δ=%gΓ", c[0], c[1]), "rate equations, textbook", Recomputed, c[2], 1e-10,
+		list = append(list, Check{fmt.Sprintf("pumping rate, Ω=%gΓ Δ=%gΓ", c[0], c[1]), "rate equations", Recomputed, c[2], 1e-10,
 			"1e-8 on two populations over 400 lifetimes; nine digits printed", func(ctx context.Context) (float64, error) { return pumping(ctx, c[0], c[1]) }})
 	}
 	for _, c := range [][2]float64{{1, 0.99999990}, {0.5, 0.99980437}} {
 		// The π time of Ω1Ω2/2Δ, with the difference of the light shifts tuned out.
 		const delta = 50
 		text := threeLevels(1, c[0], delta, delta+(1-c[0]*c[0])/(4*delta), 0, 0, 0, fill(pulse(2*math.Pi*delta/c[0]), "\"d\"", "\"p\", \"q\""))
-		list = append(list, Check{fmt.Sprintf("Raman π pulse, Ω₂=%gΩ₁ Δ=50Ω₁", c[0]), "adiabatic elimination, textbook", Recomputed, c[1], 1.5e-8, asked + "; eight digits printed", last(text, "population.b")})
+		list = append(list, Check{fmt.Sprintf("Raman π pulse, Ω₂=%gΩ₁ Δ=50Ω₁", c[0]), "adiabatic elimination", Recomputed, c[1], 1.5e-8, asked + "; eight digits printed", last(text, "population.b")})
 	}
 	return list
 }
@@ -99,7 +99,7 @@ order = "w"
 coherences = ["u:v"]
 `
 	light := sum(sum(last(text, "population.u"), last(text, "population.v")), times(2, last(text, "coherence.u:v.re")))
-	return []Check{{"quantum beats, ω=6Γ Γt=0.4", "two decaying levels, textbook", Recomputed, 0.176030256687640, 4e-8, "1e-8 on four elements of ρ", light}}
+	return []Check{{"quantum beats, ω=6Γ Γt=0.4", "two levels, one detector", Recomputed, 0.176030256687640, 4e-8, "1e-8 on four elements of ρ", light}}
 }
 
 // pumping is the rate at which the driven lower level empties, after the first

@@ -10,7 +10,7 @@ import (
 
 func shifts() (list []Check) {
 	for _, c := range [][3]float64{{1, -20, -0.0124921972503937}, {1, 10, 0.0249378105604450}} {
-		list = append(list, Check{Name: fmt.Sprintf("light shift of g, Ω=%g Δ=%g", c[0], c[1]), Source: "eigenvalue of two levels, textbook", Status: Recomputed,
+		list = append(list, Check{Name: fmt.Sprintf("light shift of g, Ω=%g Δ=%g", c[0], c[1]), Source: "eigenvalue of two levels", Status: Recomputed,
 			Expected: c[2], Tolerance: 1e-9, Why: "1e-8 on a coherence of 1/2, read as a phase after 30 units of time or more",
 			Found: func(ctx context.Context) (float64, error) { return lightShift(ctx, c[0], c[1]) }})
 	}

@@ -43,7 +43,7 @@ func rabi() (list []Check) {
 }
 
 func steady() []Check {
-	const bloch = "optical Bloch equations, textbook"
+	const bloch = "F. Bloch, Phys. Rev. 70, 460 (1946)"
 	const width = 3.43627705518632
 	return []Check{
 		{"steady state with dephasing", bloch, Recomputed, 0.307283359914939, 1e-10, direct, last(twoLevels(1.7, 0.9, 1, 0.3, endless), "population.e")},

@@ -26,7 +26,7 @@ type vectorProblem struct {
 	Decays []struct {
 		Rate float64 `json:"rate"`
 		L    [][]any `json:"L"`
-	} `json:"collapse"`
+	} `json:"jumps"`
 	Rho0   [][]any `json:"rho0"`
 	Times  []float64
 	Rho    [][][]any `json:"rho"`

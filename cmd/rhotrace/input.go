@@ -4,10 +4,13 @@ import (
 	"context"
 	"fmt"
 	"io"
+	"os"
 
 	"github.com/urfave/cli/v2"
 
 	"rhotrace/experiment"
+	"rhotrace/io/arrowfile"
+	"rhotrace/io/table"
 )
 
 // standardInput is the name of the experiment "-" in messages.
@@ -35,6 +38,13 @@ func (s *session) experimentOf(c *cli.Context) (*experiment.Experiment, error) {
 
 func (s *session) readExperiment(ctx context.Context, file string) (*experiment.Experiment, error) {
 	if file != "-" {
+		if text, is, err := resultText(file); is {
+			if err != nil {
+				return nil, mistaken("%s: %w", file, err)
+			}
+			e, err := experiment.Read(file, text)
+			return e, unread(err)
+		}
 		e, err := experiment.ReadFile(file)
 		return e, unread(err)
 	}
@@ -47,6 +57,33 @@ func (s *session) readExperiment(ctx context.Context, file string) (*experiment.
 	}
 	e, err := experiment.Read(standardInput, text)
 	return e, unread(err)
+}
+
+// resultText takes the experiment out of a result: an Arrow file of this
+// program holds the experiment that it came from. is tells whether the file is
+// an Arrow file at all.
+func resultText(file string) (text []byte, is bool, err error) {
+	f, err := os.Open(file)
+	if err != nil {
+		return nil, false, nil // the reader of experiments says what is wrong
+	}
+	defer f.Close()
+	magic := make([]byte, 6)
+	if _, err := io.ReadFull(f, magic); err != nil || string(magic) != "ARROW1" {
+		return nil, false, nil
+	}
+	if _, err := f.Seek(0, io.SeekStart); err != nil {
+		return nil, true, err
+	}
+	t, err := arrowfile.Read(f)
+	if err != nil {
+		return nil, true, err
+	}
+	own, ok := t.Meta[table.MetaExperiment]
+	if !ok {
+		return nil, true, fmt.Errorf("this Arrow file holds no experiment; name a result of rhotrace or an experiment file")
+	}
+	return []byte(own), true, nil
 }
 
 // readAll reads at most one byte more than is allowed. An interruption ends it,

@@ -14,7 +14,7 @@ func TestSlips(t *testing.T) {
 		want int
 	}{
 		{"", "", 0}, {"a", "", 1}, {"", "abc", 3},
-		{"kitten", "sitting", 3}, // V. I. Levenshtein's measure; textbook example
+		{"kitten", "sitting", 3}, // V. I. Levenshtein's measure; the usual example
 		{"rabi", "rabi", 0}, {"rabii", "rabi", 1}, {"rbai", "rabi", 1}, {"rapi", "rabi", 1},
 		{"ca", "abc", 3}, {"détuning", "detuning", 1},
 	} {
