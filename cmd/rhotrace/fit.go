@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"path/filepath"
 	"strconv"
 	"strings"
 	"text/tabwriter"
@@ -49,6 +50,9 @@ func (s *session) runFit(c *cli.Context) error {
 	if c.String("o") == "-" {
 		return mistaken("-o -: the table of a fit goes into a file; name one, as in -o fit.arrow")
 	}
+	if kept := c.String("save"); c.IsSet("save") && formatOf(kept) != "toml" {
+		return mistaken("--save %s: the experiment with the fitted values is saved as a .toml file; name one, as in --save fitted.toml", kept)
+	}
 	files := c.Args().Slice()
 	if len(files) == 0 {
 		return mistaken("fit: no file is given; write `rhotrace fit FILE TRACE…`")
@@ -79,7 +83,12 @@ func (s *session) runFit(c *cli.Context) error {
 	if err != nil {
 		return err
 	}
-	defer outputs.discard()
+	defer func() { outputs.discard() }()
+	if kept != "" {
+		if outputs.experiment, err = outfile.Create(kept); err != nil {
+			return err
+		}
+	}
 	var set fit.TraceSettings
 	if s.isTerminal(s.errOut) {
 		p := startProgress(s.errOut, "places")
@@ -106,32 +115,25 @@ func (s *session) runFit(c *cli.Context) error {
 			return err
 		}
 	}
-	if err := outputs.commit(); err != nil {
-		return err
-	}
-	if kept != "" {
-		if err := writeWhole(kept, a.Fitted.Text()); err != nil {
+	if outputs.experiment != nil {
+		if own, err := e.Traces(); err == nil && len(own) > 0 && filepath.Dir(kept) != filepath.Dir(files[0]) {
+			s.warn([]string{fmt.Sprintf("%s names its traces as %s does, and lies in another folder; put it or the traces where they belong", kept, files[0])})
+		}
+		_, err := outputs.experiment.Write(a.Fitted.Text())
+		if err := written(outputs.experiment, err); err != nil {
 			return err
 		}
+	}
+	if err := c.Context.Err(); err != nil {
+		return err
+	}
+	if err := outputs.commit(); err != nil {
+		return err
 	}
 	if c.Bool("json") {
 		return fitJSON(s.out, a)
 	}
 	return printFit(s.out, a)
-}
-
-// writeWhole writes a file at once or not at all.
-func writeWhole(name string, text []byte) error {
-	f, err := outfile.Create(name)
-	if err != nil {
-		return err
-	}
-	defer f.Discard()
-	_, err = f.Write(text)
-	if err := written(f, err); err != nil {
-		return err
-	}
-	return outfile.Commit(f)
 }
 
 // printFit prints the unknowns for people.

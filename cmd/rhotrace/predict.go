@@ -157,7 +157,7 @@ func keepInputs(e *experiment.Experiment, c *cli.Context, outputs ...string) err
 }
 
 // targets are the files in the making; nil where none is asked for.
-type targets struct{ table, figure *outfile.File }
+type targets struct{ table, figure, experiment *outfile.File }
 
 // open prepares the files, so that one that cannot be written is found before
 // the work.
@@ -183,7 +183,7 @@ func (s *session) open(saved, drawn string) (targets, error) {
 }
 
 func (o targets) list() (files []*outfile.File) {
-	for _, f := range []*outfile.File{o.table, o.figure} {
+	for _, f := range []*outfile.File{o.table, o.figure, o.experiment} {
 		if f != nil {
 			files = append(files, f)
 		}
