@@ -176,7 +176,7 @@ func TestFitRefuses(t *testing.T) {
 		{[]string{"x.toml", "a.csv", "-o", "-"}, "the table of a fit goes into a file"},
 		{[]string{"x.toml", "a.csv", "-o", "a.csv"}, "would be overwritten"},
 		{[]string{"x.toml", "a.csv", "--save", "x.toml"}, "would be overwritten"},
-		{[]string{"x.toml", "a.csv", "-o", "b.csv", "--save", "./b.csv"}, "are one file"},
+		{[]string{"x.toml", "a.csv", "-o", "b.csv", "--save", "c.csv"}, "--save c.csv"},
 	} {
 		status, out, errOut := invoke("", append([]string{"fit"}, c.args...)...)
 		assert.Equal(t, mistook, status, c.args)

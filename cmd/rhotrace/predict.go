@@ -148,7 +148,7 @@ func keepInputs(e *experiment.Experiment, c *cli.Context, outputs ...string) err
 	}
 	for i, out := range outputs {
 		for _, other := range outputs[:i] {
-			if out != "" && other != "" && (filepath.Clean(out) == filepath.Clean(other) || outfile.Same(other, out)) {
+			if out != "" && other != "" && outfile.Same(other, out) {
 				return mistaken("%s and %s are one file; name two", other, out)
 			}
 		}
