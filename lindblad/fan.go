@@ -2,6 +2,7 @@ package lindblad
 
 import (
 	"context"
+	"fmt"
 	"math"
 )
 
@@ -14,8 +15,11 @@ import (
 // holds for every duration.
 func (s *Solver) Fan(ctx context.Context, x0 []float64, dx0 [][]float64, stretches []Stretch, order []Node, fan int, durations []float64,
 	emit func(k int, x []float64, dx [][]float64) error) error {
+	if fan < 0 || fan >= len(stretches) {
+		panic(fmt.Sprintf("lindblad: a fan over stretch %d of %d", fan, len(stretches)))
+	}
 	at := fanPlace(order, fan)
-	if at < 0 || !increasing(durations) {
+	if at < 0 || stretches[fan].Ideal || !increasing(durations) {
 		return s.fanByRuns(ctx, x0, dx0, stretches, order, fan, durations, emit)
 	}
 	if err := s.begin(ctx, x0, dx0, stretches, order, Record{During: -1}); err != nil {
@@ -54,7 +58,7 @@ func (s *Solver) Fan(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 			if err := s.advance(fan, step); err != nil {
 				return err
 			}
-			now = d
+			now += step
 		}
 		copy(s.out, s.x)
 		if slides {
@@ -77,6 +81,9 @@ func (s *Solver) Fan(ctx context.Context, x0 []float64, dx0 [][]float64, stretch
 			for i, v := range after {
 				s.out[i] += v
 			}
+		}
+		if !allFinite(s.out) {
+			return errNotFinite
 		}
 		s.guard(s.out[:n])
 		if err := emit(k, s.out[:n], s.dx); err != nil {

@@ -55,19 +55,58 @@ func TestFanAgainstRuns(t *testing.T) {
 	}
 }
 
-func BenchmarkFan(b *testing.B) {
+// echo is a wait between two pulses on two levels.
+func echo(t testing.TB) (*Layout, []float64, []Stretch, []Node) {
 	h := Operator{{Row: 1, Col: 0, Value: 1}, {Row: 0, Col: 1, Value: 1}}
 	pieces := []Piece{Hamiltonian(h), Hamiltonian(Operator{{Row: 1, Col: 1, Value: 1}}), Jump(Operator{{Row: 0, Col: 1, Value: 1}})}
 	l, err := NewLayout(2, pieces, NewSupport(2, []complex128{1, 0, 0, 0}), 0)
-	require.NoError(b, err)
+	require.NoError(t, err)
 	x0 := make([]float64, l.Len())
 	l.SetState(x0, []complex128{1, 0, 0, 0})
 	stretches := []Stretch{{Lasts: 0.8, Coef: []float64{1, 0.1, 0.01}}, {Coef: []float64{0, 0.1, 0.01}}}
-	order := []Node{{Stretch: 0}, {Stretch: 1}, {Stretch: 0}}
-	durations := make([]float64, 201)
-	for k := range durations {
-		durations[k] = float64(k) * 0.05
+	return l, x0, stretches, []Node{{Stretch: 0}, {Stretch: 1}, {Stretch: 0}}
+}
+
+func equalSteps(n int, step float64) []float64 {
+	d := make([]float64, n)
+	for k := range d {
+		d[k] = float64(k) * step
 	}
+	return d
+}
+
+// A stretch that takes no time is played the same for all durations.
+func TestFanOverRotation(t *testing.T) {
+	l, x0, stretches, order := echo(t)
+	stretches[1].Ideal = true
+	var want []float64
+	v := NewSolver(l, nil, Settings{})
+	require.NoError(t, v.Run(t.Context(), x0, nil, stretches, order, Record{During: -1}, func(_ int, x []float64, _ [][]float64) error {
+		want = append(want, x...)
+		return nil
+	}))
+	require.NoError(t, v.Fan(t.Context(), x0, nil, stretches, order, 1, []float64{0, 1, 2}, func(_ int, x []float64, _ [][]float64) error {
+		assert.Equal(t, want, x)
+		return nil
+	}))
+}
+
+// An output allocates nothing: ten times as many cost no more.
+func TestFanAllocates(t *testing.T) {
+	l, x0, stretches, order := echo(t)
+	v := NewSolver(l, NewMemory(0), Settings{})
+	count := func(durations []float64) float64 {
+		return testing.AllocsPerRun(10, func() {
+			err := v.Fan(t.Context(), x0, nil, stretches, order, 1, durations, func(int, []float64, [][]float64) error { return nil })
+			require.NoError(t, err)
+		})
+	}
+	assert.Equal(t, count(equalSteps(20, 0.05)), count(equalSteps(200, 0.05)))
+}
+
+func BenchmarkFan(b *testing.B) {
+	l, x0, stretches, order := echo(b)
+	durations := equalSteps(201, 0.05)
 	v := NewSolver(l, NewMemory(0), Settings{})
 	for b.Loop() {
 		err := v.Fan(context.Background(), x0, nil, stretches, order, 1, durations, func(int, []float64, [][]float64) error { return nil })

@@ -697,11 +697,13 @@ func (s *Solver) handOut() error {
 	return s.deliver(s.clock.next - 1)
 }
 
+var errNotFinite = errors.New("lindblad: the state is no longer finite: a coefficient is too large")
+
 // deliver checks the state in s.out and emits it.
 func (s *Solver) deliver(sample int) error {
 	n := s.l.n
 	if !allFinite(s.out[:(1+s.k)*n]) {
-		return errors.New("lindblad: the state is no longer finite: a coefficient is too large")
+		return errNotFinite
 	}
 	return s.emit(sample, s.out[:n], s.dx)
 }
