@@ -382,3 +382,27 @@ func TestRecordedTime(t *testing.T) {
 	assert.Empty(t, a.Warnings)
 	assert.NotNil(t, a.Table().Column("time"))
 }
+
+// Residuals are judged along the axis, whatever the order of the rows; a bump
+// among many small residuals shows in neighbours that are alike.
+func TestResidualsAlongTheAxis(t *testing.T) {
+	text := fill(atom, "LIFETIME", "1 s", "TIME", "6 ms", "DETUNING", "417 Hz")
+	e := read(t, text+"[unknown.detuning]\ndial = \"drive.d.detuning\"\nlow = \"300 Hz\"\nhigh = \"500 Hz\"\n")
+	said := func(change func(i int) float64) string {
+		tr := noisy(t, e, 21, 0.02, 1, 0)
+		for i := range tr.Y {
+			tr.Y[i] += change(i)
+		}
+		r := rand.New(rand.NewPCG(21, 3))
+		r.Shuffle(len(tr.Y), func(i, j int) {
+			tr.Y[i], tr.Y[j] = tr.Y[j], tr.Y[i]
+			tr.Points[i], tr.Points[j] = tr.Points[j], tr.Points[i]
+		})
+		a, err := fit.Traces(context.Background(), e, []*experiment.Trace{tr}, fit.TraceSettings{})
+		require.NoError(t, err)
+		return strings.Join(a.Warnings, "\n")
+	}
+	assert.Empty(t, said(func(int) float64 { return 0 }))
+	assert.Contains(t, said(func(i int) float64 { return 0.15 * math.Exp(-math.Pow(float64(i-60)/1.5, 2)) }), "neighbours resemble one another")
+	assert.Contains(t, said(func(i int) float64 { return 0.1 * math.Cos(float64(i)/4) }), "they keep their sign for long")
+}
